@@ -1,0 +1,1 @@
+"""What is asked: the scene file, its frozen models, quantities with units, presets."""
