@@ -1,0 +1,1 @@
+"""Record to curves at frame times: shutter, visible ring, unresolved amplitude."""
