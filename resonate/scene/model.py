@@ -1,0 +1,96 @@
+"""The frozen models of a scene; every other room takes its requests from here."""
+
+from __future__ import annotations
+
+from pydantic import InstanceOf
+
+from resonate.scene.bodies import (
+    BandSpec,
+    BodySpec,
+    BoxPlace,
+    CordHold,
+    FixHold,
+    HoldSpec,
+    NamedHold,
+    NamedPlace,
+    PointPlace,
+    ShowSpec,
+    SpringHold,
+)
+from resonate.scene.clock import Clock, FrameRate
+from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
+from resonate.scene.kinds import Part
+from resonate.scene.matter import MaterialSpec, StrikerSpec
+from resonate.scene.settings import LevelSpec, PictureSpec, SoundSpec, TakeSpec, WorldSpec
+from resonate.scene.shapes import (
+    BarShape,
+    CircleOutline,
+    MembraneShape,
+    Outline,
+    PlateShape,
+    PolygonOutline,
+    RectangleOutline,
+    RingOutline,
+    ShapeSpec,
+    StringShape,
+    TubeShape,
+)
+
+__all__ = [
+    "BandSpec",
+    "BarShape",
+    "BodySpec",
+    "BoxPlace",
+    "CircleOutline",
+    "Clock",
+    "CordHold",
+    "FixHold",
+    "FrameRate",
+    "HoldSpec",
+    "LevelSpec",
+    "MaterialSpec",
+    "MembraneShape",
+    "MicSpec",
+    "NamedHold",
+    "NamedPlace",
+    "Outline",
+    "PictureSpec",
+    "PlateShape",
+    "PointPlace",
+    "PolygonOutline",
+    "RectangleOutline",
+    "RingOutline",
+    "Scene",
+    "ShapeSpec",
+    "ShowSpec",
+    "SoundSpec",
+    "SpotSpec",
+    "SpringHold",
+    "StringShape",
+    "StrikeSpec",
+    "StrikerSpec",
+    "TakeSpec",
+    "TubeShape",
+    "WorldSpec",
+]
+
+
+class Scene(Part):
+    """A whole scene, resolved: presets filled in, units in SI, times in seconds after ``start``.
+
+    ``mics`` is never empty. ``digest`` is the SHA-256 of everything that shapes the take; ``text`` is the
+    file as read and ``where`` its name.
+    """
+
+    title: str
+    take: TakeSpec
+    picture: PictureSpec
+    sound: SoundSpec
+    world: WorldSpec
+    bodies: tuple[BodySpec, ...]
+    strikes: tuple[StrikeSpec, ...]
+    mics: tuple[MicSpec, ...]
+    clock: InstanceOf[Clock]
+    digest: str
+    text: str
+    where: str
