@@ -178,7 +178,7 @@ def _unreadable(given: object, dimension: str) -> RefusedError:
 
 
 def _wrong_unit(unit: str, text: str, dimension: str) -> RefusedError:
-    allowed = list(UNITS[dimension])
+    allowed = [name for name in UNITS[dimension] if name.isascii()]
     other = [name for name, units in UNITS.items() if unit in units]
     if not allowed:
         return RefusedError(f"{shown(text)} carries a unit, but this is a plain number", "give the number alone")

@@ -1,0 +1,175 @@
+"""Gathers every fault of one scene file, each with its line and key path."""
+
+from __future__ import annotations
+
+import re
+from typing import TYPE_CHECKING, Any, Final, TypeVar
+
+from pydantic import ValidationError
+
+from resonate.errors import Fault
+from resonate.scene.kinds import Part
+from resonate.scene.locate import Locator, written
+from resonate.scene.names import choose, listing, nearest
+from resonate.scene.refused import Path, RefusedError, shown
+
+if TYPE_CHECKING:
+    from collections.abc import Iterable, Mapping
+
+P = TypeVar("P", bound=Part)
+
+#: How a missing key may be written.
+_EXAMPLES: Final = {
+    "length": '"0.3 m"',
+    "width": '"30 mm"',
+    "height": '"5 mm"',
+    "diameter": '"20 mm"',
+    "outer": '"25 mm"',
+    "wall": '"1.5 mm"',
+    "tension": '"80 N" (a string) or "2 kN/m" (a membrane)',
+    "outline": '{rectangle = ["0.4 m", "0.3 m"]}',
+    "thickness": '"3 mm"',
+    "name": '"pan"',
+    "shape": '"plate"',
+    "material": '"brass"',
+    "density": '"7.85 g/cm^3"',
+    "young": '"200 GPa"',
+    "shear": '"80 GPa"',
+    "mass": '"12 g"',
+    "tip_radius": '"8 mm"',
+    "tip_young": '"2 GPa"',
+    "restitution": "0.6",
+    "body": '"pan"',
+    "time": '"0.5 s"',
+    "striker": '"wooden knob"',
+    "speed": '"1.5 m/s"',
+    "place": "[0, 1, 0]",
+    "where": '"left"',
+    "hold": '"pinned"',
+}
+
+
+def keys_of(model: type[Part]) -> list[str]:
+    """Keys of a model as a file writes them."""
+    names = []
+    for name, info in model.model_fields.items():
+        alias = info.validation_alias
+        names.append(alias if isinstance(alias, str) else name)
+    return [name for name in names if " " not in name and name != "kind"]
+
+
+class Faults:
+    """The faults found so far in one file.
+
+    Parameters
+    ----------
+    where : str
+        Name of the file.
+    locator : Locator
+        Finds the line of a key path.
+    """
+
+    def __init__(self, where: str, locator: Locator) -> None:
+        self._where = where
+        self._locator = locator
+        self._found: list[tuple[int, Fault]] = []
+        self._moved: dict[Path, Path] = {}
+        self._missing: dict[Path, Fault] = {}
+        self._misspelt: set[Path] = set()
+
+    @property
+    def all(self) -> tuple[Fault, ...]:
+        """Every fault, in the order of the file; a key that is only misspelt is not called missing too."""
+        excused = {self._missing[path] for path in self._misspelt if path in self._missing}
+        ordered = sorted(self._found, key=lambda pair: pair[0])
+        return tuple(dict.fromkeys(fault for _, fault in ordered if fault not in excused))
+
+    def __bool__(self) -> bool:
+        """Whether anything is wrong."""
+        return bool(self._found)
+
+    def move(self, path: Path, written_at: Path) -> None:
+        """Note that what the models call ``path`` is written at ``written_at`` in the file."""
+        self._moved[path] = written_at
+
+    def add(self, path: Path, *, what: str, fix: str) -> Fault:
+        """Note one fault at a key path of the models, and return it."""
+        source = self._source(path)
+        line = self._locator.find(source).line
+        name = written(source)
+        place = f"{self._where}:{line}: {name}" if name else f"{self._where}:{line}"
+        fault = Fault(what=what, where=place, fix=fix)
+        self._found.append((line, fault))
+        return fault
+
+    def refuse(self, path: Path, error: RefusedError) -> None:
+        """Note a refused value at ``path``."""
+        self.add((*path, *error.at), what=error.what, fix=error.fix)
+
+    def table(self, value: object, path: Path, *, hint: str) -> dict[str, Any] | None:
+        """Return ``value`` when it is a table; note a fault and return None otherwise."""
+        if isinstance(value, dict):
+            return value
+        self.add(path, what=f"{shown(value)} is not a table", fix=hint)
+        return None
+
+    def part(
+        self,
+        model: type[P],
+        data: Mapping[str, Any],
+        path: Path,
+        *,
+        context: object = None,
+        also: Iterable[str] = (),
+    ) -> P | None:
+        """Validate one table into a model; note its faults and return None if there are any.
+
+        ``also`` names further keys that stand in the same table, for suggestions.
+        """
+        try:
+            return model.model_validate(dict(data), by_alias=True, by_name=False, context=context)
+        except ValidationError as error:
+            for item in error.errors(include_url=False):
+                self._note(item, model, path, [*keys_of(model), *also])
+            return None
+
+    def unknown(self, path: Path, allowed: list[str]) -> None:
+        """Note an unknown key."""
+        key = str(path[-1])
+        close = nearest(key, allowed)
+        if close:
+            self._misspelt.add(self._source((*path[:-1], close)))
+        self.add(
+            path,
+            what=f"unknown key '{key}'" + (f"; did you mean '{close}'?" if close else ""),
+            fix=f"use one of {listing(allowed)}, or remove it",
+        )
+
+    def _source(self, path: Path) -> Path:
+        # The longest moved prefix first; a part of a moved part is moved twice.
+        for _ in range(3):
+            for cut in range(len(path), 0, -1):
+                if path[:cut] in self._moved:
+                    path = (*self._moved[path[:cut]], *path[cut:])
+                    break
+            else:
+                return path
+        return path
+
+    def _note(self, item: Any, model: type[Part], path: Path, allowed: list[str]) -> None:  # noqa: ANN401
+        kind, at = item["type"], (*path, *item["loc"])
+        cause = item.get("ctx", {}).get("error")
+        if isinstance(cause, RefusedError):
+            self.refuse(at, cause)
+        elif kind == "missing":
+            key = str(at[-1])
+            example = f" = {_EXAMPLES[key]}" if key in _EXAMPLES else ""
+            fault = self.add(at, what=f"{key} is missing", fix=f"add {key}{example}")
+            self._missing[self._source(at)] = fault
+        elif kind == "extra_forbidden":
+            self.unknown(at, allowed)
+        elif kind == "literal_error":
+            options = re.findall(r"'([^']*)'", str(item["ctx"]["expected"]))
+            self.add(at, what=f"{shown(item['input'])} is not allowed here", fix=choose(str(item["input"]), options))
+        elif kind != "default_factory_not_called":
+            self.add(at, what=f"{shown(item['input'])} cannot be used here: {item['msg']}", fix="see the manual")

@@ -1,0 +1,57 @@
+"""What a scene leaves unsaid: the default microphone, and the digest of the whole."""
+
+from __future__ import annotations
+
+import dataclasses
+import hashlib
+import json
+from fractions import Fraction
+from typing import TYPE_CHECKING, Any
+
+from pydantic import BaseModel
+
+from resonate.scene.happenings import MicSpec
+from resonate.scene.shapes import is_line
+
+if TYPE_CHECKING:
+    from resonate.scene.bodies import BodySpec
+    from resonate.scene.kinds import Quaternion, Triple
+
+
+def default_microphone(body: BodySpec) -> MicSpec:
+    """One omni, 1 m in front of the body: along its +z for lines, its +y for plates and membranes."""
+    front = (0.0, 0.0, 1.0) if is_line(body.shape) else (0.0, 1.0, 0.0)
+    x, y, z = rotated(front, body.turn)
+    place = body.place_m
+    return MicSpec(name="front", place_m=(place[0] + x, place[1] + y, place[2] + z))
+
+
+def rotated(vector: Triple, turn: Quaternion) -> Triple:
+    """Turn a vector by a unit quaternion xyzw."""
+    x, y, z, w = turn
+    a, b, c = vector
+    # v + 2 q x (q x v + w v), q the vector part
+    u = (y * c - z * b + w * a, z * a - x * c + w * b, x * b - y * a + w * c)
+    return (
+        a + 2.0 * (y * u[2] - z * u[1]),
+        b + 2.0 * (z * u[0] - x * u[2]),
+        c + 2.0 * (x * u[1] - y * u[0]),
+    )
+
+
+def digest_of(parts: dict[str, Any]) -> str:
+    """SHA-256 of the canonical JSON of a resolved scene: equal scenes, equal digests."""
+    text = json.dumps(_plain(parts), sort_keys=True, separators=(",", ":"), ensure_ascii=True, allow_nan=False)
+    return hashlib.sha256(text.encode("ascii")).hexdigest()
+
+
+def _plain(value: Any) -> Any:  # noqa: ANN401 (a tree of any values)
+    if isinstance(value, BaseModel):
+        return {name: _plain(getattr(value, name)) for name in type(value).model_fields}
+    if dataclasses.is_dataclass(value) and not isinstance(value, type):
+        return {item.name: _plain(getattr(value, item.name)) for item in dataclasses.fields(value)}
+    if isinstance(value, dict):
+        return {str(key): _plain(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(item) for item in value]
+    return str(value) if isinstance(value, Fraction) else value
