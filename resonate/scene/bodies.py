@@ -6,7 +6,19 @@ from typing import Annotated, Any, Final, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
 
-from resonate.scene.kinds import Flag, Frequency, Length, Name, Part, Place, Triple, Turn, number, vector, whole
+from resonate.scene.kinds import (
+    Flag,
+    Frequency,
+    Length,
+    Name,
+    Part,
+    Place,
+    Triple,
+    Turn,
+    number,
+    vector,
+    whole,
+)
 from resonate.scene.matter import MaterialSpec
 from resonate.scene.names import choose
 from resonate.scene.refused import RefusedError, shown
@@ -52,7 +64,9 @@ class NamedHold(Part):
 
 def _axes(value: object) -> tuple[str, ...]:
     if not isinstance(value, list | tuple) or not value:
-        raise RefusedError(f"{shown(value)} fixes nothing", f"name at least one of {', '.join(AXES)}, as a list")
+        raise RefusedError(
+            f"{shown(value)} fixes nothing", f"name at least one of {', '.join(AXES)}, as a list"
+        )
     for place, axis in enumerate(value):
         if axis not in AXES:
             raise RefusedError(f"{shown(axis)} is not an axis", choose(str(axis), AXES), at=(place,))
@@ -173,6 +187,13 @@ class BodySpec(Part):
     @model_validator(mode="after")
     def _possible(self) -> BodySpec:
         allowed = edge_names(self.shape)
+        if not self.support and isinstance(self.shape, StringShape | MembraneShape):
+            raise RefusedError(
+                f"a {self.shape.kind} under tension that nothing holds",
+                "leave out support (it is then pinned all round), or hold its ends or edges",
+                at=("support",),
+            )
+        seen: set[str] = set()
         for place, entry in enumerate(self.support):
             if not isinstance(entry.where, NamedPlace):
                 continue
@@ -183,6 +204,13 @@ class BodySpec(Part):
                         choose(name, allowed),
                         at=("support", place, "where"),
                     )
+                if name in seen:
+                    raise RefusedError(
+                        f"{shown(name)} is held twice",
+                        "name it in one entry only",
+                        at=("support", place, "where"),
+                    )
+                seen.add(name)
         moving = [key for key, value in (("speed", self.speed_m_s), ("spin", self.spin_rad_s)) if any(value)]
         if self.held and moving:
             raise RefusedError(
@@ -192,5 +220,5 @@ class BodySpec(Part):
 
 
 def default_spot(shape: Any) -> str:  # noqa: ANN401 (any member of the union)
-    """The named spot of a strike that names none."""
+    """Return the named spot of a strike that names none."""
     return spot_names(shape)[0]

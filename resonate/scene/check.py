@@ -40,7 +40,7 @@ def check_scene(
             continue
         faults.add(
             ("body", place, "modes", "heard"),
-            what=f"heard {body.modes.heard_hz:g} Hz is above half the sample rate, {0.5 * sound.rate_hz:g} Hz",
+            what=f"heard {body.modes.heard_hz:g} Hz is above half the rate, {0.5 * sound.rate_hz:g} Hz",
             fix="lower heard or raise sound.rate",
         )
 
@@ -63,15 +63,15 @@ def check_strike(
     clock: Clock | None,
     faults: Faults,
 ) -> None:
-    """The time lies in the take, the spot on the body."""
+    """Check that the time lies in the take and the spot on the body."""
     if strike is None:
         return
     path = ("strike", place)
-    if clock is not None and not clock.begin <= strike.time_s < clock.end:
-        side = "before the take begins" if strike.time_s < clock.begin else "after the take ends"
+    if clock is not None and not clock.begin_s <= strike.time_s < clock.end_s:
+        side = "before the take begins" if strike.time_s < clock.begin_s else "after the take ends"
         faults.add(
             (*path, "time"),
-            what=f"{strike.time_s:g} s is {side}; the take runs from {clock.begin_s:g} s to {clock.end_s:g} s",
+            what=f"{strike.time_s:g} s is {side}: it runs from {clock.begin_s:g} s to {clock.end_s:g} s",
             fix="move the strike into the take, or change take.length or picture.handles",
         )
     if strike.direction is not None and strike.angle_rad:

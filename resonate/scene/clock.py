@@ -136,7 +136,9 @@ def frame_of(label: str, rate: FrameRate) -> int:
     """
     found = _LABEL.fullmatch(label.strip())
     if found is None:
-        raise RefusedError(f"{shown(label)} is not a timecode", 'write hours:minutes:seconds:frames, "01:00:00:00"')
+        raise RefusedError(
+            f"{shown(label)} is not a timecode", 'write hours:minutes:seconds:frames, "01:00:00:00"'
+        )
     hours, minutes, seconds, frames = (int(found.group(place)) for place in (1, 2, 3, 5))
     if found.group(4) == ";" and not rate.drop:
         raise RefusedError(
@@ -267,7 +269,7 @@ class Clock:
         return self.first_frame / self.frame.fraction * self.sample_rate
 
     def label(self, frame: int) -> int:
-        """Number shown for delivered frame ``frame``: its own number, or the count from 0 with timecode."""
+        """Return the number shown for a delivered frame: its own, or the count from 0 with timecode."""
         return self.first_frame + frame if self.numbered else frame
 
     def timecode(self, frame: int) -> str:
@@ -289,4 +291,6 @@ def read_start(value: object, rate: FrameRate) -> tuple[int, bool]:
         if re.fullmatch(r"\d{1,9}(\s*f)?", value.strip()):
             return int(value.strip().rstrip("f ")), True
         return frame_of(value, rate), False
-    raise RefusedError(f"{shown(value)} is not a start", 'give a timecode such as "01:00:00:00" or a frame number')
+    raise RefusedError(
+        f"{shown(value)} is not a start", 'give a timecode such as "01:00:00:00" or a frame number'
+    )

@@ -59,17 +59,10 @@ def keys_of(model: type[Part]) -> list[str]:
 
 
 class Faults:
-    """The faults found so far in one file.
-
-    Parameters
-    ----------
-    where : str
-        Name of the file.
-    locator : Locator
-        Finds the line of a key path.
-    """
+    """The faults found so far in one file."""
 
     def __init__(self, where: str, locator: Locator) -> None:
+        """Begin without faults; ``where`` names the file, ``locator`` finds its lines."""
         self._where = where
         self._locator = locator
         self._found: list[tuple[int, Fault]] = []
@@ -130,7 +123,7 @@ class Faults:
             return model.model_validate(dict(data), by_alias=True, by_name=False, context=context)
         except ValidationError as error:
             for item in error.errors(include_url=False):
-                self._note(item, model, path, [*keys_of(model), *also])
+                self._note(item, path, [*keys_of(model), *also])
             return None
 
     def unknown(self, path: Path, allowed: list[str]) -> None:
@@ -156,7 +149,7 @@ class Faults:
                 return path
         return path
 
-    def _note(self, item: Any, model: type[Part], path: Path, allowed: list[str]) -> None:  # noqa: ANN401
+    def _note(self, item: Any, path: Path, allowed: list[str]) -> None:  # noqa: ANN401
         kind, at = item["type"], (*path, *item["loc"])
         cause = item.get("ctx", {}).get("error")
         if isinstance(cause, RefusedError):
@@ -170,6 +163,12 @@ class Faults:
             self.unknown(at, allowed)
         elif kind == "literal_error":
             options = re.findall(r"'([^']*)'", str(item["ctx"]["expected"]))
-            self.add(at, what=f"{shown(item['input'])} is not allowed here", fix=choose(str(item["input"]), options))
+            self.add(
+                at,
+                what=f"{shown(item['input'])} is not allowed here",
+                fix=choose(str(item["input"]), options),
+            )
         elif kind != "default_factory_not_called":
-            self.add(at, what=f"{shown(item['input'])} cannot be used here: {item['msg']}", fix="see the manual")
+            self.add(
+                at, what=f"{shown(item['input'])} cannot be used here: {item['msg']}", fix="see the manual"
+            )

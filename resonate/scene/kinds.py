@@ -69,7 +69,9 @@ def vector(read: Callable[[object], float], *, count: int = 3) -> Callable[[obje
 
     def read_all(value: object) -> tuple[float, ...]:
         if not isinstance(value, list | tuple) or len(value) != count:
-            raise RefusedError(f"{shown(value)} is not a list of {count} values", f"give {count} values, [..]")
+            raise RefusedError(
+                f"{shown(value)} is not a list of {count} values", f"give {count} values, [..]"
+            )
         return tuple(_element(read, item, place) for place, item in enumerate(value))
 
     return read_all
@@ -87,7 +89,9 @@ def whole(least: int, most: int) -> Callable[[object], int]:
 
     def read(value: object) -> int:
         if isinstance(value, bool) or not isinstance(value, int) or not least <= value <= most:
-            raise RefusedError(f"{shown(value)} is not allowed here", f"give a whole number from {least} to {most}")
+            raise RefusedError(
+                f"{shown(value)} is not allowed here", f"give a whole number from {least} to {most}"
+            )
         return value
 
     return read
@@ -138,7 +142,9 @@ def _name(value: object) -> str:
     if not isinstance(value, str) or not value.strip():
         raise RefusedError(f"{shown(value)} is not a name", "give a text that is not empty")
     if not value.isprintable() or any(letter in value for letter in '/\\".,;:*?<>|{}'):
-        raise RefusedError(f"{shown(value)} cannot name a column", "use letters, digits, spaces, - and _ only")
+        raise RefusedError(
+            f"{shown(value)} cannot name a column", "use letters, digits, spaces, - and _ only"
+        )
     if len(value) > 80:  # noqa: PLR2004 (a column head)
         raise RefusedError(f"{shown(value)} is {len(value)} characters long", "use at most 80")
     return value.strip()

@@ -68,12 +68,16 @@ def refuse_keys(table: dict[str, Any], kind: str, path: Path, faults: Faults) ->
 def _refuse_sound(rest: dict[str, Any], path: Path, faults: Faults) -> None:
     if "tail" in rest and rest["tail"] != "keep":
         faults.add(
-            (*path, "tail"), what=f"tail = {shown(rest['tail'])} is not in this version", fix='write tail = "keep"'
+            (*path, "tail"),
+            what=f"tail = {shown(rest['tail'])} is not in this version",
+            fix='write tail = "keep"',
         )
         del rest["tail"]
     if rest.get("stems") in ("body", "hit"):
         faults.add(
-            (*path, "stems"), what=f"stems = {shown(rest['stems'])} is not in this version", fix='write stems = "none"'
+            (*path, "stems"),
+            what=f"stems = {shown(rest['stems'])} is not in this version",
+            fix='write stems = "none"',
         )
         del rest["stems"]
     level = rest.get("level")

@@ -6,7 +6,9 @@ that the standard reader has already accepted, so it need not judge the grammar.
 
 from __future__ import annotations
 
+import json
 import re
+import tomllib
 from dataclasses import dataclass, field
 from typing import Final
 
@@ -86,10 +88,8 @@ class _Scanner:
 
     def key(self) -> str:
         self.skip(_SPACE)
-        if self.text[self.at] in "\"'":
-            name = _unquoted(self.skip(_STRING))
-        else:
-            name = self.skip(_BARE)
+        quoted = self.text[self.at] in "\"'"
+        name = _unquoted(self.skip(_STRING)) if quoted else self.skip(_BARE)
         self.skip(_SPACE)
         return name
 
@@ -145,26 +145,21 @@ class _Scanner:
 def _unquoted(text: str) -> str:
     if text[0] == "'" or "\\" not in text:
         return text[1:-1]
-    import tomllib
-
     return next(iter(tomllib.loads(f"{text} = 0")))
 
 
 class Locator:
     """Finds keys in a TOML text.
 
-    Parameters
-    ----------
-    text : str
-        A text that ``tomllib.loads`` accepts.
-
     Examples
     --------
-    >>> Locator('a = 1\\n[[body]]\\nname = "pan"\\n').find(("body", 0, "name"))
+    >>> text = chr(10).join(["a = 1", "[[body]]", 'name = "pan"'])
+    >>> Locator(text).find(("body", 0, "name"))
     Spot(line=3, column=1)
     """
 
     def __init__(self, text: str) -> None:
+        """Scan a text that ``tomllib.loads`` accepts."""
         # Line ends as the standard reader sees them.
         scanner = _Scanner(text.replace("\r\n", "\n"))
         scanner.document()
@@ -195,6 +190,6 @@ def written(path: Path) -> str:
         if isinstance(key, int):
             text += f"[{key}]"
         else:
-            name = key if _BARE.fullmatch(key) else f'"{key}"'
+            name = key if _BARE.fullmatch(key) else json.dumps(key, ensure_ascii=False)
             text += f".{name}" if text else name
     return text

@@ -99,8 +99,8 @@ class MaterialSpec(Part):
         validation_alias="shear", default_factory=_isotropic_shear
     )
     loss: Annotated[LossPoints, BeforeValidator(_loss)] = ((1000.0, DEFAULT_LOSS),)
-    expansion_1_k: Annotated[float, BeforeValidator(number("expansion", least=-1e-3, most=1e-2))] | None = Field(
-        validation_alias="expansion", default=None
+    expansion_1_k: Annotated[float, BeforeValidator(number("expansion", least=-1e-3, most=1e-2))] | None = (
+        Field(validation_alias="expansion", default=None)
     )
     conductivity_w_mk: Annotated[float, BeforeValidator(number("conductivity", above=0.0))] | None = Field(
         validation_alias="conductivity", default=None
@@ -144,7 +144,9 @@ class MaterialSpec(Part):
         if self.isotropic:
             if self.poisson[0] >= 0.5:  # noqa: PLR2004 (incompressible)
                 raise RefusedError(
-                    f"{self.poisson[0]:g} is out of range", "give a number above -1 and below 0.5", at=("poisson",)
+                    f"{self.poisson[0]:g} is out of range",
+                    "give a number above -1 and below 0.5",
+                    at=("poisson",),
                 )
             return self
         (e1, e2, e3), (n12, n13, n23) = self.young_pa, self.poisson
@@ -216,7 +218,9 @@ class StrikerSpec(Part):
     """
 
     name: str = "own"
-    mass_kg: Annotated[float, BeforeValidator(number("mass", above=0.0, most=1e4))] = Field(validation_alias="mass")
+    mass_kg: Annotated[float, BeforeValidator(number("mass", above=0.0, most=1e4))] = Field(
+        validation_alias="mass"
+    )
     tip_radius_m: Length = Field(validation_alias="tip_radius")
     tip_young_pa: Modulus = Field(validation_alias="tip_young")
     tip_poisson: Poisson = DEFAULT_POISSON

@@ -80,14 +80,17 @@ def resolved(value: object, kind: Kind) -> dict[str, Any]:
         raise RefusedError(
             f"{shown(value)} is not a {_SINGULAR[kind]}", f"give one of {listing(tables(kind))}, or a table"
         )
-    if "name" in value or "source" in value and not isinstance(value["source"], str):
-        key = "name" if "name" in value else "source"
-        raise RefusedError(f"{key} cannot be used here", "remove it", at=(key,))
+    if "name" in value:
+        raise RefusedError("a material or striker of a scene has no name", "remove name", at=("name",))
+    if not isinstance(value.get("source", ""), str):
+        raise RefusedError(f"{shown(value['source'])} is not a text", "give a text", at=("source",))
     if "from" not in value:
         return dict(value)
     origin = value["from"]
     if not isinstance(origin, str):
-        raise RefusedError(f"{shown(origin)} is not the name of a {_SINGULAR[kind]}", "give a name", at=("from",))
+        raise RefusedError(
+            f"{shown(origin)} is not the name of a {_SINGULAR[kind]}", "give a name", at=("from",)
+        )
     try:
         base = preset_table(origin, kind)
     except RefusedError as error:
@@ -103,12 +106,20 @@ def resolved(value: object, kind: Kind) -> dict[str, Any]:
 
 def _without_stale(base: dict[str, Any], changes: dict[str, Any]) -> dict[str, Any]:
     # Of E, G and nu of an isotropic solid the unnamed one follows from the named.
-    if {"young", "shear"} <= changes.keys() and "poisson" not in changes and not isinstance(base["young"], list):
+    if (
+        {"young", "shear"} <= changes.keys()
+        and "poisson" not in changes
+        and not isinstance(base["young"], list)
+    ):
         base = {key: item for key, item in base.items() if key != "poisson"}
     elif "shear" in changes and not isinstance(base["young"], list):
         dropped = "young" if "poisson" in changes else "poisson"
         base = {key: item for key, item in base.items() if key != dropped}
-    if isinstance(base.get("young"), list) and {"young", "poisson"} <= changes.keys() and "shear" not in changes:
+    if (
+        isinstance(base.get("young"), list)
+        and {"young", "poisson"} <= changes.keys()
+        and "shear" not in changes
+    ):
         base = {key: item for key, item in base.items() if key != "shear"}
     return base
 

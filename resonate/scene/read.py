@@ -66,12 +66,14 @@ def read_scene(path: FilePath | str) -> Scene:
             fix="save the file as UTF-8",
         ) from error
     except (OSError, ValueError) as error:
-        raise SceneError(what=f"the file cannot be read: {error}", where=where, fix="check the path") from error
-    return parse_scene(text, where=where, base=file.parent)
+        raise SceneError(
+            what=f"the file cannot be read: {error}", where=where, fix="check the path"
+        ) from error
+    return parse_scene(text, where=where)
 
 
-def parse_scene(text: str, where: str = "scene.toml", base: FilePath | None = None) -> Scene:
-    """Read a scene from text; ``where`` names it in errors, ``base`` is where relative files would lie.
+def parse_scene(text: str, where: str = "scene.toml") -> Scene:
+    """Read a scene from text; ``where`` names it in errors.
 
     Raises
     ------
@@ -103,19 +105,23 @@ def parse_scene(text: str, where: str = "scene.toml", base: FilePath | None = No
 
 def _load(text: str, where: str) -> dict[str, Any]:
     if not text.strip():
-        raise SceneError(what="the file is empty", where=f"{where}:1", fix='start one with "resonate new NAME"')
+        raise SceneError(
+            what="the file is empty", where=f"{where}:1", fix='start one with "resonate new NAME"'
+        )
     try:
         return tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # also a number of thousands of digits
         message = str(error)
         found = re.search(r"\(at line (\d+), column \d+\)", message)
         line = int(found.group(1)) if found else text.count("\n") + 1
-        reason = message.split(" (at ")[0]
+        reason = message.partition(" (at ")[0]
         raise SceneError(
             what=f"not TOML: {reason}", where=f"{where}:{line}", fix="correct the line; text stands in quotes"
         ) from error
     except RecursionError as error:
-        raise SceneError(what="the file is nested too deeply", where=f"{where}:1", fix="flatten it") from error
+        raise SceneError(
+            what="the file is nested too deeply", where=f"{where}:1", fix="flatten it"
+        ) from error
 
 
 class _Reading:
@@ -140,7 +146,9 @@ class _Reading:
         clock = _clock(take, picture, sound)
         bodies = [read_body(item, ("body", place), self.faults) for place, item in self.rows("body")]
         if not self.document.get("body"):
-            self.faults.add((), what="no body in the scene", fix="add a [[body]] with name, shape and material")
+            self.faults.add(
+                (), what="no body in the scene", fix="add a [[body]] with name, shape and material"
+            )
         strikes = [self.strike(item, place, bodies, counting) for place, item in self.rows("strike")]
         mics = [self.mic(item, place) for place, item in self.rows("mic")]
         check_scene(clock, sound, bodies, mics, self.faults)
@@ -165,7 +173,9 @@ class _Reading:
     def rows(self, key: str) -> list[tuple[int, object]]:
         value = self.document.get(key, [])
         if not isinstance(value, list):
-            self.faults.add((key,), what=f"{key} is not a list of tables", fix=f"write [[{key}]] with two brackets")
+            self.faults.add(
+                (key,), what=f"{key} is not a list of tables", fix=f"write [[{key}]] with two brackets"
+            )
             return []
         return list(enumerate(value))
 
@@ -173,7 +183,9 @@ class _Reading:
         given = self.document.get("title", FilePath(self.where).stem)
         if not isinstance(given, str) or not given.strip() or not given.isprintable() or len(given) > 200:  # noqa: PLR2004
             self.faults.add(
-                ("title",), what=f"{shown(given)} is not a title", fix="give one line of text, at most 200 characters"
+                ("title",),
+                what=f"{shown(given)} is not a title",
+                fix="give one line of text, at most 200 characters",
             )
             return None
         return given.strip()
@@ -193,7 +205,9 @@ class _Reading:
 
     def sound(self) -> SoundSpec | None:
         given = self.document.get("sound", {})
-        table = self.faults.table(given, ("sound",), hint=f"begin it with [sound]: {listing(keys_of(SoundSpec))}")
+        table = self.faults.table(
+            given, ("sound",), hint=f"begin it with [sound]: {listing(keys_of(SoundSpec))}"
+        )
         if table is None:
             return None
         table = refuse_keys(table, "sound", ("sound",), self.faults)
@@ -231,7 +245,9 @@ class _Reading:
         parts["body"] = body.name if body else "unknown"
         parts["body index"] = index or 0
         spot = self.spot(parts.get("spot"), (*path, "spot"), body)
-        striker = read_striker(parts["striker"], (*path, "striker"), self.faults) if "striker" in parts else None
+        striker = (
+            read_striker(parts["striker"], (*path, "striker"), self.faults) if "striker" in parts else None
+        )
         sound = sound and spot is not None and (striker is not None or "striker" not in parts)
         parts["spot"] = spot or SpotSpec(name="centre")
         if "striker" in parts:

@@ -2,24 +2,29 @@
 
 from __future__ import annotations
 
+import json
+
+_MOST = 12  # elements shown of a list
+
 Key = str | int
 Path = tuple[Key, ...]
 
 
 class RefusedError(ValueError):
-    """A value that cannot be used.
-
-    Parameters
-    ----------
-    what : str
-        The value given and what is allowed.
-    fix : str
-        What to write instead.
-    at : tuple of str or int
-        Keys below the value being read that lead to the culprit, ``("wall",)`` for instance.
-    """
+    """A value that cannot be used."""
 
     def __init__(self, what: str, fix: str, *, at: Path = ()) -> None:
+        """Say what is wrong, how to fix it, and which keys below the value lead to the culprit.
+
+        Parameters
+        ----------
+        what : str
+            The value given and what is allowed.
+        fix : str
+            What to write instead.
+        at : tuple of str or int
+            ``("wall",)`` for instance.
+        """
         self.what = what
         self.fix = fix
         self.at = at
@@ -35,9 +40,13 @@ def shown(value: object, *, limit: int = 60) -> str:
     if isinstance(value, bool):
         text = "true" if value else "false"
     elif isinstance(value, str):
-        text = f'"{value}"'
+        text = json.dumps(value, ensure_ascii=False)
     elif isinstance(value, list | tuple):
-        text = "[" + ", ".join(shown(item) for item in value[:12]) + ("]" if len(value) <= 12 else ", ...]")
+        text = (
+            "["
+            + ", ".join(shown(item) for item in value[:_MOST])
+            + ("]" if len(value) <= _MOST else ", ...]")
+        )
     elif isinstance(value, dict):
         text = "{" + ", ".join(f"{key} = {shown(item)}" for key, item in list(value.items())[:8]) + "}"
     else:

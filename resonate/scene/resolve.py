@@ -40,14 +40,19 @@ def rotated(vector: Triple, turn: Quaternion) -> Triple:
 
 
 def digest_of(parts: dict[str, Any]) -> str:
-    """SHA-256 of the canonical JSON of a resolved scene: equal scenes, equal digests."""
-    text = json.dumps(_plain(parts), sort_keys=True, separators=(",", ":"), ensure_ascii=True, allow_nan=False)
+    """SHA-256 of the canonical JSON of a resolved scene: equal scenes, equal digests.
+
+    Where a material's values come from (``source``) shapes nothing and is left out.
+    """
+    text = json.dumps(
+        _plain(parts), sort_keys=True, separators=(",", ":"), ensure_ascii=True, allow_nan=False
+    )
     return hashlib.sha256(text.encode("ascii")).hexdigest()
 
 
 def _plain(value: Any) -> Any:  # noqa: ANN401 (a tree of any values)
     if isinstance(value, BaseModel):
-        return {name: _plain(getattr(value, name)) for name in type(value).model_fields}
+        return {name: _plain(getattr(value, name)) for name in type(value).model_fields if name != "source"}
     if dataclasses.is_dataclass(value) and not isinstance(value, type):
         return {item.name: _plain(getattr(value, item.name)) for item in dataclasses.fields(value)}
     if isinstance(value, dict):

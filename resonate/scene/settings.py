@@ -36,9 +36,13 @@ def _files(value: object) -> tuple[str, ...]:
         raise RefusedError(f"{shown(value)} is not a list of files", f"list some of {', '.join(FILES)}")
     for place, item in enumerate(value):
         if item in LATER_FILES:
-            raise RefusedError(f"{shown(item)} is not in this version", f"use {', '.join(FILES)}", at=(place,))
+            raise RefusedError(
+                f"{shown(item)} is not in this version", f"use {', '.join(FILES)}", at=(place,)
+            )
         if item not in FILES:
-            raise RefusedError(f"{shown(item)} is not a file of a take", choose(str(item), FILES), at=(place,))
+            raise RefusedError(
+                f"{shown(item)} is not a file of a take", choose(str(item), FILES), at=(place,)
+            )
     return tuple(item for item in FILES if item in value)
 
 
@@ -63,6 +67,14 @@ def _shutter(value: object) -> float:
     return share
 
 
+def _start(value: object) -> str | int:
+    if isinstance(value, bool) or not isinstance(value, int | str):
+        raise RefusedError(
+            f"{shown(value)} is not a start", 'give a timecode such as "01:00:00:00" or a frame number'
+        )
+    return value
+
+
 class PictureSpec(Part):
     """``[picture]``: ``rate  start  handles  shutter  up  unit``.
 
@@ -71,7 +83,7 @@ class PictureSpec(Part):
     """
 
     rate: Annotated[InstanceOf[FrameRate], BeforeValidator(FrameRate.read)] = FrameRate(Fraction(24))
-    start: str | int = "01:00:00:00"
+    start: Annotated[str | int, BeforeValidator(_start)] = "01:00:00:00"
     handles: Annotated[int, BeforeValidator(whole(0, 10**6))] = 0
     shutter_turn: Annotated[float, BeforeValidator(_shutter)] = Field(validation_alias="shutter", default=0.5)
     up: Literal["y", "z"] = "y"
@@ -144,8 +156,8 @@ class WorldSpec(Part):
     gravity_m_s2: Annotated[float, BeforeValidator(number("acceleration", least=0.0, most=1000.0))] = Field(
         validation_alias="gravity", default=STANDARD_GRAVITY
     )
-    temperature_k: Annotated[float, BeforeValidator(number("temperature", least=173.15, most=473.15))] = Field(
-        validation_alias="temperature", default=293.15
+    temperature_k: Annotated[float, BeforeValidator(number("temperature", least=173.15, most=473.15))] = (
+        Field(validation_alias="temperature", default=293.15)
     )
     humidity: Annotated[float, BeforeValidator(number("fraction", least=0.0, most=1.0))] = 0.5
     pressure_pa: Annotated[float, BeforeValidator(number("pressure", least=1e3, most=1e6))] = Field(

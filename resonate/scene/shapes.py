@@ -56,7 +56,9 @@ class RingOutline(Part):
 
 def _corners(value: object) -> Corners:
     if not isinstance(value, list | tuple) or len(value) < 3:  # noqa: PLR2004 (a triangle)
-        raise RefusedError(f"{shown(value)} has fewer than 3 corners", "give at least 3 corners [[x, z], ...]")
+        raise RefusedError(
+            f"{shown(value)} has fewer than 3 corners", "give at least 3 corners [[x, z], ...]"
+        )
     corners: list[tuple[float, float]] = []
     for place, corner in enumerate(value):
         if not isinstance(corner, list | tuple) or len(corner) != 2:  # noqa: PLR2004 (x and z)
@@ -95,7 +97,8 @@ def _check_polygon(corners: list[tuple[float, float]]) -> None:
             ends = (corners[k], corners[(k + 1) % count], corners[j], corners[(j + 1) % count])
             if _overlap(*ends) if adjacent else _cross(*ends):
                 raise RefusedError(
-                    f"edges {k + 1} and {j + 1} of the polygon cross", "list the corners in order round the outline"
+                    f"edges {k + 1} and {j + 1} of the polygon cross",
+                    "list the corners in order round the outline",
                 )
 
 
@@ -148,7 +151,9 @@ def _profile(value: object) -> Profile | tuple[tuple[float, ...], ...]:
     for place, row in enumerate(value):
         if not isinstance(row, list | tuple) or len(row) not in (2, 3):
             raise RefusedError(
-                f"{shown(row)} is not a profile entry", "give [fraction, height] or [fraction, height, width]", at=(place,)
+                f"{shown(row)} is not a profile entry",
+                "give [fraction, height] or [fraction, height, width]",
+                at=(place,),
             )
         reads = (_read_fraction, _read_height, _read_width)
         rows.append(tuple(_at(reads[k], item, (place, k)) for k, item in enumerate(row)))
@@ -181,7 +186,9 @@ def _check_profile(rows: list[tuple[float, ...]]) -> None:
         raise RefusedError("a step at the very end of the bar", "give fractions 0 and 1 once each", at=(0,))
     for place, row in enumerate(rows):
         if row[1] == 0.0 and place not in (0, last):
-            raise RefusedError("height 0 inside the bar", "a height of 0 is allowed only at an end", at=(place, 1))
+            raise RefusedError(
+                "height 0 inside the bar", "a height of 0 is allowed only at an end", at=(place, 1)
+            )
     if rows[0][1] == rows[-1][1] == 0.0 and last == 1:
         raise RefusedError("the bar has no height anywhere", "give a height above 0", at=(0, 1))
 
@@ -218,7 +225,11 @@ class BarShape(Part):
         if self.diameter_m is not None:
             extra = [
                 key
-                for key, value in (("width", self.width_m), ("height", self.height_m), ("profile", self.profile))
+                for key, value in (
+                    ("width", self.width_m),
+                    ("height", self.height_m),
+                    ("profile", self.profile),
+                )
                 if value
             ]
             if extra:
@@ -231,7 +242,9 @@ class BarShape(Part):
         if not self.profile:
             for key, value in (("width", self.width_m), ("height", self.height_m)):
                 if value is None:
-                    raise RefusedError(f"a bar without {key}", "give width and height, or diameter", at=(key,))
+                    raise RefusedError(
+                        f"a bar without {key}", "give width and height, or diameter", at=(key,)
+                    )
             return self
         for place, row in enumerate(self.profile):
             if len(row) < 3:  # noqa: PLR2004 (fraction, height, width)
@@ -271,7 +284,9 @@ class StringShape(Part):
     kind: Literal["string"] = "string"
     length_m: Length = Field(validation_alias="length")
     diameter_m: Length = Field(validation_alias="diameter")
-    tension_n: Annotated[float, BeforeValidator(number("force", above=0.0))] = Field(validation_alias="tension")
+    tension_n: Annotated[float, BeforeValidator(number("force", above=0.0))] = Field(
+        validation_alias="tension"
+    )
 
 
 class MembraneShape(Part):
@@ -280,7 +295,9 @@ class MembraneShape(Part):
     kind: Literal["membrane"] = "membrane"
     outline: Outline
     thickness_m: Length = Field(validation_alias="thickness")
-    tension_n_m: Annotated[float, BeforeValidator(number("tension", above=0.0))] = Field(validation_alias="tension")
+    tension_n_m: Annotated[float, BeforeValidator(number("tension", above=0.0))] = Field(
+        validation_alias="tension"
+    )
 
 
 class PlateShape(Part):

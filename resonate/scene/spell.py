@@ -97,7 +97,9 @@ def _read_shape(table: dict[str, Any], path: Path, faults: Faults) -> Part | Non
     return _build_shape(given, parts, at, faults)
 
 
-def _read_shape_table(given: dict[str, Any], beside: dict[str, Any], path: Path, faults: Faults) -> Part | None:
+def _read_shape_table(
+    given: dict[str, Any], beside: dict[str, Any], path: Path, faults: Faults
+) -> Part | None:
     at = (*path, "shape")
     if "kind" in given:
         kind, parts = given["kind"], {key: item for key, item in given.items() if key != "kind"}
@@ -106,7 +108,9 @@ def _read_shape_table(given: dict[str, Any], beside: dict[str, Any], path: Path,
         kind, inner = next(iter(given.items()))
         named_at = (*at, kind)
         if kind in SHAPES and not isinstance(inner, dict):
-            faults.add(named_at, what=f"{shown(inner)} is not a table", fix=f"give {listing(_SHAPE_KEYS[kind])}")
+            faults.add(
+                named_at, what=f"{shown(inner)} is not a table", fix=f"give {listing(_SHAPE_KEYS[kind])}"
+            )
             return None
         parts = inner if isinstance(inner, dict) else {}
         for key in parts:
@@ -115,7 +119,9 @@ def _read_shape_table(given: dict[str, Any], beside: dict[str, Any], path: Path,
             for key in _SHAPE_KEYS[kind]:
                 faults.move((*at, key), (*named_at, key))
     else:
-        faults.add(at, what=f"{shown(given)} names no shape", fix='write shape = "bar", or {kind = "bar", ...}')
+        faults.add(
+            at, what=f"{shown(given)} names no shape", fix='write shape = "bar", or {kind = "bar", ...}'
+        )
         return None
     _refuse_beside(beside, (), BODY_KEYS, path, faults)
     if not isinstance(kind, str) or kind not in SHAPES:
@@ -126,7 +132,9 @@ def _read_shape_table(given: dict[str, Any], beside: dict[str, Any], path: Path,
 
 def _refuse_kind(given: object, path: Path, faults: Faults) -> None:
     if given in LATER_SHAPES:
-        faults.add(path, what=f"shape {shown(given)} is not in this version", fix=f"use one of {listing(SHAPES)}")
+        faults.add(
+            path, what=f"shape {shown(given)} is not in this version", fix=f"use one of {listing(SHAPES)}"
+        )
     else:
         faults.add(path, what=f"{shown(given)} is not a shape", fix=choose(str(given), SHAPES))
 
@@ -166,14 +174,18 @@ def _build_shape(kind: str, parts: dict[str, Any], path: Path, faults: Faults) -
 
 
 def _read_outline(value: object, path: Path, faults: Faults) -> Part | None:
-    hint = f"write one of {{rectangle = [a, b]}}, {{circle = d}}, {{ring = [outer, inner]}}, {{polygon = [[x, z], ...]}}"
+    hint = (
+        "write one of {rectangle = [a, b]}, {circle = d}, {ring = [outer, inner]}, {polygon = [[x, z], ...]}"
+    )
     table = faults.table(value, path, hint=hint)
     if table is None:
         return None
     if "kind" in table:
         kind = table["kind"]
         if kind not in OUTLINES:
-            faults.add((*path, "kind"), what=f"{shown(kind)} is not an outline", fix=choose(str(kind), OUTLINES))
+            faults.add(
+                (*path, "kind"), what=f"{shown(kind)} is not an outline", fix=choose(str(kind), OUTLINES)
+            )
             return None
         return faults.part(OUTLINES[kind], {key: item for key, item in table.items() if key != "kind"}, path)
     if len(table) != 1:
@@ -240,7 +252,11 @@ def _read_support(value: object, path: Path, faults: Faults) -> tuple[HoldSpec, 
         value = [value]
         faults.move((*path, 0), path)
     if not isinstance(value, list) or not value:
-        faults.add(path, what=f"{shown(value)} holds nothing", fix='write "free", or a list of {where = .., hold = ..}')
+        faults.add(
+            path,
+            what=f"{shown(value)} holds nothing",
+            fix='write "free", or a list of {where = .., hold = ..}',
+        )
         return None
     entries = [_read_entry(item, (*path, place), faults) for place, item in enumerate(value)]
     kept = [entry for entry in entries if entry is not None]
@@ -266,7 +282,9 @@ def _read_entry(value: object, path: Path, faults: Faults) -> HoldSpec | None:
 
 
 def _read_where(value: object, path: Path, faults: Faults) -> Where | None:
-    hint = 'write an edge or end by name, a list of names, {point = [x, y, z]} or {box = [[x, y, z], [x, y, z]]}'
+    hint = (
+        "write an edge or end by name, a list of names, {point = [x, y, z]} or {box = [[x, y, z], [x, y, z]]}"
+    )
     if isinstance(value, str):
         return NamedPlace(names=(value,))
     if isinstance(value, list) and value and all(isinstance(name, str) for name in value):
@@ -290,13 +308,18 @@ def _read_hold(value: object, path: Path, faults: Faults) -> Hold | None:
             return None
         return faults.part(NamedHold, {"kind": value}, path)
     if isinstance(value, dict):
-        models: tuple[tuple[str, type[Hold]], ...] = (("fix", FixHold), ("cord", CordHold), ("spring", SpringHold))
+        models: tuple[tuple[str, type[Hold]], ...] = (
+            ("fix", FixHold),
+            ("cord", CordHold),
+            ("spring", SpringHold),
+        )
         for key, model in models:
             if key in value:
                 return faults.part(model, value, path)
     faults.add(
         path,
         what=f"{shown(value)} is not a hold",
-        fix=f'write one of {listing(NAMED_HOLDS)}, {{fix = ["x", "rx"]}}, {{spring = k, damper = c}} or {{cord = length}}',
+        fix=f'write one of {listing(NAMED_HOLDS)}, {{fix = ["x", "rx"]}}, '
+        "{spring = k, damper = c} or {cord = length}",
     )
     return None

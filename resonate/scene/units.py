@@ -78,7 +78,7 @@ UNITS: Final[Mapping[str, Mapping[str, Fraction]]] = {
 
 _ZERO_CELSIUS: Final = Fraction("273.15")  # SI Brochure, 2.3.1
 _LONGEST: Final = 64  # characters of a quantity; longer text is never a sensible one
-_WRITTEN: Final = re.compile(r"([+-]?(?:\d[\d_]*\.?\d*|\.\d+)(?:[eE][+-]?\d{1,4})?)\s*(\S.*)?")
+_WRITTEN: Final = re.compile(r"([+-]?(?:\d[\d_]*\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)\s*(\S.*)?")
 
 
 def quantity(value: object, dimension: str) -> float:
@@ -156,7 +156,9 @@ def _exact_number(number: str, given: object, dimension: str) -> Fraction:
         raise RefusedError(f"{shown(given)} is not a finite number", f"give {_example(dimension)}")
     if near == 0.0:
         if re.search("[1-9]", number.lower().split("e")[0]):
-            raise RefusedError(f"{shown(given)} is too small to be told from 0", "write 0, or a larger number")
+            raise RefusedError(
+                f"{shown(given)} is too small to be told from 0", "write 0, or a larger number"
+            )
         return Fraction(0)
     return Fraction(number)
 
@@ -181,7 +183,9 @@ def _wrong_unit(unit: str, text: str, dimension: str) -> RefusedError:
     allowed = [name for name in UNITS[dimension] if name.isascii()]
     other = [name for name, units in UNITS.items() if unit in units]
     if not allowed:
-        return RefusedError(f"{shown(text)} carries a unit, but this is a plain number", "give the number alone")
+        return RefusedError(
+            f"{shown(text)} carries a unit, but this is a plain number", "give the number alone"
+        )
     what = f"'{unit}' is not a {dimension} unit"
     if other:
         what += f" but one of {other[0]}"
