@@ -1,0 +1,85 @@
+"""Lines that shake the air: compact dipoles along bars, tubes and strings."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.field.samples import frozen
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from resonate.field.samples import Samples
+
+    Array = NDArray[np.float64]
+    ComplexArray = NDArray[np.complex128]
+
+
+@dataclass(frozen=True, slots=True)
+class DipoleLine:
+    """Slices of a line, each a compact dipole (satisfies ``Transfer``).
+
+    Parameters
+    ----------
+    samples : Samples
+        Samples along the line.
+    volume_m3 : Array
+        (n, 3) displaced plus added volume of each slice, for motion along body x, y and z.
+    warnings : tuple[str, ...]
+        What the model leaves out.
+
+    Notes
+    -----
+    A slice that moves with acceleration a pushes on the air with the force
+    ``F = density * (displaced + added volume) * a``. Holds where the cross-section is small against
+    the wavelength; the pressure is
+    ``p = j k cos(angle) F exp(-j k r) / (4 pi r) * (1 + 1 / (j k r))``.
+    """
+
+    samples: Samples
+    volume_m3: Array
+    warnings: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        """Copy and freeze."""
+        object.__setattr__(self, "volume_m3", frozen(self.volume_m3))
+
+    @property
+    def radius_m(self) -> float:
+        """Half the length of the line."""
+        return self.samples.radius_m
+
+    def weights(self, place_m: Array, reference_m: float) -> ComplexArray:
+        """Pressure per unit modal acceleration.
+
+        Parameters
+        ----------
+        place_m : Array
+            (3,) place of the microphone in the body frame, m.
+        reference_m : float
+            Distance whose delay is left out of the phases, m.
+
+        Returns
+        -------
+        ComplexArray
+            (m,) weights w, Pa s^2 m^-1 kg^-1/2: ``p(t) = Re[w a(t - reference_m / c)]``.
+
+        References
+        ----------
+        Landau & Lifshitz, Fluid Mechanics 2nd ed. (1987), section 74.
+        Pierce, Acoustics (1989), section 4.3 (compact dipoles).
+        """
+        samples = self.samples
+        rays = samples.rays(place_m)
+        distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
+        spread = samples.air.density_kg_m3 / (4.0 * np.pi) * self.volume_m3 * rays / distance[:, None] ** 2
+        heard = np.empty(samples.heard, dtype=np.complex128)
+        for part in samples.chunks():
+            wavenumber = samples.wavenumber_1_m[part, None]
+            push = np.einsum("hni,ni->hn", samples.motion[part], spread)
+            phase = np.exp(1j * wavenumber * (reference_m - distance))
+            heard[part] = np.einsum("hn,hn->h", push * (1j * wavenumber + 1.0 / distance), phase)
+        return samples.padded(heard)

@@ -1,0 +1,88 @@
+"""Flat faces in a wide baffle: Rayleigh's sum over the moving surface."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.field.samples import frozen
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from resonate.field.samples import Samples
+
+    Array = NDArray[np.float64]
+    ComplexArray = NDArray[np.complex128]
+
+
+@dataclass(frozen=True, slots=True)
+class BaffledFace:
+    """A skin or plate in an endless rigid baffle (satisfies ``Transfer``).
+
+    Parameters
+    ----------
+    samples : Samples
+        Samples of the face.
+    normals : Array
+        (n, 3) unit normals.
+    area_m2 : Array
+        (n,) area of each sample.
+    warnings : tuple[str, ...]
+        What the model leaves out.
+
+    Notes
+    -----
+    Both sides of the face are served. Behind it the pressure has the opposite sign, because the face
+    moves away there. Without a baffle the two sides would short-circuit where
+    the face is small against the wavelength; this model does not hold there and says so.
+    """
+
+    samples: Samples
+    normals: Array
+    area_m2: Array
+    warnings: tuple[str, ...] = ()
+
+    def __post_init__(self) -> None:
+        """Copy and freeze."""
+        object.__setattr__(self, "normals", frozen(self.normals))
+        object.__setattr__(self, "area_m2", frozen(self.area_m2))
+
+    @property
+    def radius_m(self) -> float:
+        """Half the extent of the face."""
+        return self.samples.radius_m
+
+    def weights(self, place_m: Array, reference_m: float) -> ComplexArray:
+        """Pressure per unit modal acceleration.
+
+        Parameters
+        ----------
+        place_m : Array
+            (3,) place of the microphone in the body frame, m.
+        reference_m : float
+            Distance whose delay is left out of the phases, m.
+
+        Returns
+        -------
+        ComplexArray
+            (m,) weights w, Pa s^2 m^-1 kg^-1/2: ``p(t) = Re[w a(t - reference_m / c)]``.
+
+        References
+        ----------
+        Rayleigh, The Theory of Sound vol. 2 (1896), section 278.
+        Kinsler, Frey, Coppens & Sanders, Fundamentals of Acoustics 4th ed. (2000), section 7.4.
+        """
+        samples = self.samples
+        rays = samples.rays(place_m)
+        distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
+        side = 1.0 if float(self.area_m2 @ np.einsum("ni,ni->n", rays, self.normals)) >= 0.0 else -1.0
+        spread = side * samples.air.density_kg_m3 / (2.0 * np.pi) * self.area_m2 / distance
+        heard = np.empty(samples.heard, dtype=np.complex128)
+        for part in samples.chunks():
+            flow = np.einsum("hni,ni->hn", samples.motion[part], self.normals) * spread
+            phase = samples.wavenumber_1_m[part, None] * (reference_m - distance)
+            heard[part] = np.einsum("hn,hn->h", flow, np.exp(1j * phase))
+        return samples.padded(heard)

@@ -1,0 +1,140 @@
+"""Where a body moves the air: radiating samples with the motion of its heard modes."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.errors import BodyError
+
+if TYPE_CHECKING:
+    from collections.abc import Iterator
+
+    from numpy.typing import NDArray
+
+    from resonate.body.body import Body
+    from resonate.field.air import Air
+    from resonate.modes.modeset import ModeSet
+
+    Array = NDArray[np.float64]
+
+# Numbers in one chunk of a sum over modes and samples: about 16 MB of complex values.
+CHUNK = 1_000_000
+
+
+def frozen(values: Array) -> Array:
+    """Contiguous read-only copy as float64."""
+    copy = np.array(values, dtype=np.float64, order="C")
+    copy.setflags(write=False)
+    return copy
+
+
+@dataclass(frozen=True, slots=True)
+class Samples:
+    """Radiating samples of one body and how its heard modes move them.
+
+    Parameters
+    ----------
+    body : str
+        Name of the body.
+    points_m : Array
+        (n, 3) samples in the body frame.
+    motion : Array
+        (h, n, 3) displacement of the samples in each heard mode, kg**-0.5.
+    wavenumber_1_m : Array
+        (h,) wavenumber in air of each heard mode.
+    modes : int
+        Number of modes m of the body, heard or not.
+    near_m : float
+        A microphone closer to a sample than this cannot be served.
+    air : Air
+        The air outside.
+    """
+
+    body: str
+    points_m: Array
+    motion: Array
+    wavenumber_1_m: Array
+    modes: int
+    near_m: float
+    air: Air
+
+    def __post_init__(self) -> None:
+        """Copy and freeze."""
+        for name in ("points_m", "motion", "wavenumber_1_m"):
+            object.__setattr__(self, name, frozen(getattr(self, name)))
+
+    @property
+    def heard(self) -> int:
+        """Number of modes that sound, h."""
+        return len(self.wavenumber_1_m)
+
+    @property
+    def radius_m(self) -> float:
+        """Half the diagonal of the box round the samples."""
+        return float(0.5 * np.linalg.norm(np.ptp(self.points_m, axis=0)))
+
+    def rays(self, place_m: Array) -> Array:
+        """Vectors (n, 3) from the samples to a place in the body frame.
+
+        Raises
+        ------
+        BodyError
+            If the place is inside the body or closer to it than the samples can serve.
+        """
+        rays = np.asarray(place_m, dtype=np.float64) - self.points_m
+        nearest = float(np.sqrt(np.min(np.einsum("ni,ni->n", rays, rays))))
+        if not nearest >= self.near_m:
+            raise BodyError(
+                what=f"a microphone {nearest:.4g} m from the body; the model holds from {self.near_m:.4g} m on",
+                where=f"body {self.body!r}",
+                fix=f"move the microphone at least {self.near_m:.2g} m away from the body",
+            )
+        return rays
+
+    def chunks(self) -> Iterator[slice]:
+        """Slices of the heard modes, small enough that modes times samples stay bounded."""
+        step = max(1, CHUNK // max(1, len(self.points_m)))
+        for begin in range(0, self.heard, step):
+            yield slice(begin, min(begin + step, self.heard))
+
+    def padded(self, weights: NDArray[np.complex128]) -> NDArray[np.complex128]:
+        """Weights of the heard modes (h,) with zeros for the silent ones (m,)."""
+        full = np.zeros(self.modes, dtype=np.complex128)
+        full[: self.heard] = weights
+        return full
+
+
+def samples_of(body: Body, modes: ModeSet, air: Air) -> Samples:
+    """Sample a body's radiator and the motion of its heard modes."""
+    radiator = body.radiator
+    shape = modes.shape[:, : modes.heard]
+    moved = np.asarray(body.probe(radiator.points_m) @ shape)
+    motion = moved.reshape(len(radiator.points_m), 3, modes.heard).transpose(2, 0, 1)
+    return Samples(
+        body=body.name,
+        points_m=radiator.points_m,
+        motion=motion,
+        wavenumber_1_m=modes.omega[: modes.heard] / air.speed_m_s,
+        modes=modes.count,
+        near_m=_near_m(body),
+        air=air,
+    )
+
+
+def _near_m(body: Body) -> float:
+    # Faces: the side of the largest sample. Lines: the distance between slices, or the
+    # distance from the line to the surface where that is more.
+    radiator = body.radiator
+    if radiator.kind == "baffled":
+        return float(np.sqrt(np.max(radiator.weights[:, 0])))
+    steps = np.linalg.norm(np.diff(radiator.points_m, axis=0), axis=1)
+    spacing = float(np.max(steps)) if len(steps) else 0.0
+    surface = body.surface.points_m
+    reach = 0.0
+    for begin in range(0, len(surface), 4096):
+        part = surface[begin : begin + 4096, None, :] - radiator.points_m
+        reach = max(reach, float(np.sqrt(np.einsum("sni,sni->sn", part, part).min(axis=1).max())))
+    return max(spacing, reach)

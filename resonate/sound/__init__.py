@@ -1,0 +1,1 @@
+"""From a record and the air to pressure at microphones, and its levels."""
