@@ -297,6 +297,7 @@ def _extras(curves: Curves, scene: Scene, record: Record) -> Json:
     return {
         "title": scene.title,
         "frame_rate": f"{rate.numerator}/{rate.denominator}",
+        "drop_frame": clock.frame.drop,
         "frames": len(curves.times_s),
         "handles": clock.handles,
         "time_zero": "frame 0, the first delivered frame, handles included",

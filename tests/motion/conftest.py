@@ -12,6 +12,7 @@ from scipy.sparse import csr_matrix
 
 from resonate.body.body import Inertia, Surface
 from resonate.modes.modeset import Decay, ModeSet
+from resonate.scene.clock import Clock, FrameRate
 
 
 def make_modes(frequency_hz, decay, *, shape=None, rigid=None, body="bar"):
@@ -130,45 +131,20 @@ class Track:
         return np.atleast_2d(self.linear_m(np.asarray(times_s)))
 
 
-@dataclass
-class StandInClock:
-    """Frames of a rational rate, as the scene's clock gives them."""
-
-    frame: object
-    handles: int
-    frames: int
-    start_frame: int = 86400
-    numbered: bool = False
-
-    @property
-    def frame_count(self):
-        return self.frames
-
-    def frame_time(self, k):
-        return Fraction(k - self.handles) / self.frame.fraction
-
-    @property
-    def begin(self):
-        return self.frame_time(0)
-
-    @property
-    def end(self):
-        return self.frame_time(self.frames)
-
-    def timecode(self, _k):
-        return "01:00:00:00"
-
-    def label(self, k):
-        return k
-
-
 def make_scene(
     *, rate=Fraction(24), frames=48, handles=8, shutter_turn=0.5, ring="readable", size=None, most=8
 ):
     show = SimpleNamespace(ring=ring, size=size, most=most)
     return SimpleNamespace(
         title="Galley bar",
-        clock=StandInClock(frame=SimpleNamespace(fraction=Fraction(rate)), handles=handles, frames=frames),
+        clock=Clock(
+            frame=FrameRate(Fraction(rate)),
+            sample_rate=48000,
+            start_frame=86400,
+            numbered=False,
+            handles=handles,
+            length=Fraction(frames - 2 * handles) / Fraction(rate),
+        ),
         picture=SimpleNamespace(shutter_turn=shutter_turn),
         bodies=(SimpleNamespace(name="bar", show=show),),
     )

@@ -18,6 +18,7 @@ import pytest
 from resonate.body.body import Surface
 from resonate.errors import TakeError
 from resonate.motion.channels import BodyCurves, Curves
+from resonate.scene.clock import Clock, FrameRate
 from resonate.take.glb import normal_change, write_glb
 
 RATE = Fraction(24000, 1001)
@@ -89,12 +90,13 @@ def make_curves(extra=(0.3111, 1.0), frames=FRAMES):
 
 
 def make_scene():
-    clock = SimpleNamespace(
-        frame=SimpleNamespace(fraction=RATE),
-        begin=Fraction(-8) / RATE,
+    clock = Clock(
+        frame=FrameRate(RATE),
+        sample_rate=48000,
+        start_frame=86400,  # 01:00:00:00 at 24 labels a second
+        numbered=False,
         handles=8,
-        timecode=lambda k: f"00:59:59:{16 + k:02}",
-        label=lambda k: k,
+        length=Fraction(FRAMES - 16) / RATE,
     )
     return SimpleNamespace(title="Galley mug", clock=clock)
 
@@ -184,6 +186,7 @@ def test_extras_carry_timecode_rate_events_and_exaggeration(written):
     document, _ = parse(written)
     extras = document["asset"]["extras"]
     assert extras["frame_rate"] == "24000/1001"
+    assert extras["drop_frame"] is False
     assert extras["timecode_of_frame_0"] == "00:59:59:16"
     np.testing.assert_allclose([e["begin_s"] for e in extras["events"]], [0.3111, 1.0], atol=1e-15)
     node = document["nodes"][0]["extras"]
