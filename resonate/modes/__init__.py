@@ -1,0 +1,1 @@
+"""From two energies to modes: frequencies, shapes, decay by cause, and the store on disk."""
