@@ -57,12 +57,7 @@ class FrameRate:
         """Refuse rates that are not delivered anywhere."""
         if self.fraction not in _RATES:
             raise RefusedError(f"{self.fraction} is not a frame rate", f"use one of {_ALLOWED}")
-        if self.drop and self.fraction.denominator == 1:
-            raise RefusedError(
-                f"{self.fraction} frames a second has no drop-frame labels",
-                'drop belongs to "30000/1001 drop" and "60000/1001 drop"; leave it out',
-            )
-        if self.drop and self.nominal % 30:
+        if self.drop and (self.fraction.denominator == 1 or self.nominal % 30):
             raise RefusedError(
                 f"{self.fraction} frames a second has no drop-frame labels",
                 'drop belongs to "30000/1001 drop" and "60000/1001 drop"; leave it out',

@@ -34,7 +34,6 @@ _KEYS: Final[dict[str, dict[str, tuple[tuple[Any, ...] | None, str]]]] = {
         "head": (("hit",), 'remove head, or write head = "picture"'),
     },
 }
-_PATTERNS: Final = ("cardioid", "figure", "eight", "stereo", "binaural", "ambisonic")
 
 
 def refuse_tables(document: dict[str, Any], faults: Faults) -> dict[str, Any]:

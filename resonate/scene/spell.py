@@ -19,6 +19,7 @@ from resonate.scene.bodies import (
     ShowSpec,
     SpringHold,
     Where,
+    default_support,
 )
 from resonate.scene.faults import Faults, keys_of
 from resonate.scene.later import refuse_keys
@@ -29,7 +30,7 @@ from resonate.scene.refused import Path, RefusedError, shown
 from resonate.scene.shapes import LATER_SHAPES, OUTLINES, SHAPES, BarShape
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable
+    from collections.abc import Collection
 
     from resonate.scene.kinds import Part
 
@@ -58,9 +59,9 @@ def read_body(value: object, path: Path, faults: Faults) -> BodySpec | None:
     if "support" in table:
         support = _read_support(table["support"], (*path, "support"), faults)
         sound = sound and support is not None
-        parts["support"] = support or ()
-    if shape is None:
-        parts["support"] = ()
+        parts["support"] = support
+    if shape is None or parts.get("support", ()) is None:
+        parts["support"] = default_support(parts["shape"])
     for key, model in (("modes", BandSpec), ("show", ShowSpec)):
         if key in table:
             part = _read_table(model, table[key], (*path, key), faults)
@@ -83,14 +84,15 @@ def _read_shape(table: dict[str, Any], path: Path, faults: Faults) -> Part | Non
         return _read_shape_table(given, beside, path, faults)
     if given is None:
         faults.add(at, what="shape is missing", fix=f'add shape = "plate", or another of {listing(SHAPES)}')
-        _refuse_beside(beside, set().union(*_SHAPE_KEYS.values()), BODY_KEYS, path, faults)
+        _refuse_beside(beside, SHAPES, path, faults)
         return None
     if not isinstance(given, str) or given not in SHAPES:
         _refuse_kind(given, at, faults)
-        _refuse_beside(beside, set().union(*_SHAPE_KEYS.values()), BODY_KEYS, path, faults)
+        if given not in LATER_SHAPES:
+            _refuse_beside(beside, SHAPES, path, faults)
         return None
     own = _SHAPE_KEYS[given]
-    _refuse_beside(beside, own, [*own, *BODY_KEYS], path, faults, shape=given)
+    _refuse_beside(beside, (given,), path, faults)
     parts = {key: item for key, item in beside.items() if key in own}
     for key in own:
         faults.move((*at, key), (*path, key))
@@ -113,17 +115,14 @@ def _read_shape_table(
             )
             return None
         parts = inner if isinstance(inner, dict) else {}
-        for key in parts:
+        for key in {*parts, *_SHAPE_KEYS.get(kind, ())}:
             faults.move((*at, key), (*named_at, key))
-        if kind in SHAPES:
-            for key in _SHAPE_KEYS[kind]:
-                faults.move((*at, key), (*named_at, key))
     else:
         faults.add(
             at, what=f"{shown(given)} names no shape", fix='write shape = "bar", or {kind = "bar", ...}'
         )
         return None
-    _refuse_beside(beside, (), BODY_KEYS, path, faults)
+    _refuse_beside(beside, (), path, faults)
     if not isinstance(kind, str) or kind not in SHAPES:
         _refuse_kind(kind, named_at, faults)
         return None
@@ -139,28 +138,21 @@ def _refuse_kind(given: object, path: Path, faults: Faults) -> None:
         faults.add(path, what=f"{shown(given)} is not a shape", fix=choose(str(given), SHAPES))
 
 
-def _refuse_beside(
-    beside: dict[str, Any],
-    allowed: Iterable[str],
-    suggested: list[str],
-    path: Path,
-    faults: Faults,
-    *,
-    shape: str | None = None,
-) -> None:
-    allowed = set(allowed)
+def _refuse_beside(beside: dict[str, Any], kinds: Collection[str], path: Path, faults: Faults) -> None:
+    # Of the keys that are not the body's own, only those of these shapes may stand beside them.
+    own = [key for kind in kinds for key in _SHAPE_KEYS[kind]]
     for key in beside:
-        if key in allowed:
+        if key in own:
             continue
-        owners = [kind for kind, keys in _SHAPE_KEYS.items() if key in keys]
-        if shape and owners:
+        if len(kinds) == 1 and any(key in keys for keys in _SHAPE_KEYS.values()):
+            shape = next(iter(kinds))
             faults.add(
                 (*path, key),
                 what=f"a {shape} has no {key}",
                 fix=f"remove it; a {shape} takes {listing(_SHAPE_KEYS[shape])}",
             )
         else:
-            faults.unknown((*path, key), suggested)
+            faults.unknown((*path, key), [*dict.fromkeys(own), *BODY_KEYS])
 
 
 def _build_shape(kind: str, parts: dict[str, Any], path: Path, faults: Faults) -> Part | None:
