@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Any, Final
 
 from resonate.scene.names import choose
 from resonate.scene.refused import shown
@@ -13,7 +13,8 @@ if TYPE_CHECKING:
 
     from resonate.scene.clock import Clock
     from resonate.scene.faults import Faults
-    from resonate.scene.model import BodySpec, MicSpec, SoundSpec, StrikeSpec
+    from resonate.scene.model import BodySpec, MicSpec, SoundSpec, SpotSpec, StrikeSpec
+    from resonate.scene.refused import Path
 
 #: More delivered frames than this are a slip of the pen: 4.6 days at 25 frames a second.
 MOST_FRAMES: Final = 10_000_000
@@ -56,14 +57,8 @@ def _check_names(key: str, names: Sequence[str | None], faults: Faults) -> None:
             )
 
 
-def check_strike(
-    strike: StrikeSpec | None,
-    place: int,
-    bodies: Sequence[BodySpec | None],
-    clock: Clock | None,
-    faults: Faults,
-) -> None:
-    """Check that the time lies in the take and the spot on the body."""
+def check_strike(strike: StrikeSpec | None, place: int, clock: Clock | None, faults: Faults) -> None:
+    """Check that the time lies in the take and that one thing says where the strike comes from."""
     if strike is None:
         return
     path = ("strike", place)
@@ -80,25 +75,18 @@ def check_strike(
             what="direction and angle both say where the strike comes from",
             fix="remove one of them; angle is measured from the inward normal",
         )
-    body = bodies[strike.body_index] if strike.body_index < len(bodies) else None
-    if body is not None:
-        _check_spot(strike, body, place, faults)
 
 
-def _check_spot(strike: StrikeSpec, body: BodySpec, place: int, faults: Faults) -> None:
-    path = ("strike", place, "spot")
-    allowed = spot_names(body.shape)
-    if strike.spot.name is not None and strike.spot.name not in allowed:
+def check_spot(spot: SpotSpec, shape: Any, path: Path, faults: Faults) -> None:  # noqa: ANN401 (any shape)
+    """Check that a shape has such a spot."""
+    allowed = spot_names(shape)
+    if spot.name is not None and spot.name not in allowed:
         faults.add(
             path,
-            what=f"{shown(strike.spot.name)} is not a spot of this {body.shape.kind}",
-            fix=choose(strike.spot.name, allowed),
+            what=f"{shown(spot.name)} is not a spot of this {shape.kind}",
+            fix=choose(spot.name, allowed),
         )
-    if strike.spot.fraction is not None:
-        wanted = (1, 2) if is_line(body.shape) else (2,)
-        if len(strike.spot.fraction) not in wanted:
-            faults.add(
-                (*path, "fraction"),
-                what=f"{len(strike.spot.fraction)} fraction on a {body.shape.kind}",
-                fix="give [u, v], shares along x and z",
-            )
+    if spot.fraction is not None and len(spot.fraction) == 1 and not is_line(shape):
+        faults.add(
+            (*path, "fraction"), what=f"1 fraction on a {shape.kind}", fix="give [u, v], shares along x and z"
+        )

@@ -14,7 +14,7 @@ from resonate.scene.names import choose, listing, nearest
 from resonate.scene.refused import Path, RefusedError, shown
 
 if TYPE_CHECKING:
-    from collections.abc import Iterable, Mapping
+    from collections.abc import Mapping
 
 P = TypeVar("P", bound=Part)
 
@@ -51,11 +51,13 @@ _EXAMPLES: Final = {
 
 def keys_of(model: type[Part]) -> list[str]:
     """Keys of a model as a file writes them."""
-    names = []
-    for name, info in model.model_fields.items():
-        alias = info.validation_alias
-        names.append(alias if isinstance(alias, str) else name)
-    return [name for name in names if " " not in name and name != "kind"]
+    fields = {name: info.validation_alias for name, info in model.model_fields.items()}
+    names = [
+        alias if isinstance(alias, str) else name
+        for name, alias in fields.items()
+        if name not in model.set_by_reader
+    ]
+    return [*names, *model.also_written]
 
 
 class Faults:
@@ -113,18 +115,42 @@ class Faults:
         path: Path,
         *,
         context: object = None,
-        also: Iterable[str] = (),
+        instead: Mapping[str, Any] | None = None,
     ) -> P | None:
-        """Validate one table into a model; note its faults and return None if there are any.
+        """Validate one table into a model and note its faults.
 
-        ``also`` names further keys that stand in the same table, for suggestions.
+        Parameters
+        ----------
+        model : type
+            What to make.
+        data : mapping
+            The table.
+        path : tuple
+            Where it stands.
+        context : object
+            Passed to the validators.
+        instead : mapping
+            Stands in for refused keys, so that what remains is still checked as a whole.
+
+        Returns
+        -------
+        Part or None
+            With faults, None, or the model without its refused keys where ``instead`` is given.
         """
-        try:
-            return model.model_validate(dict(data), by_alias=True, by_name=False, context=context)
-        except ValidationError as error:
-            for item in error.errors(include_url=False):
-                self._note(item, path, [*keys_of(model), *also])
-            return None
+        parts = dict(data)
+        for _ in range(3):  # values, then what is checked across values
+            try:
+                return model.model_validate(parts, by_alias=True, by_name=False, context=context)
+            except ValidationError as error:
+                items = error.errors(include_url=False)
+            for item in items:
+                self._note(item, path, keys_of(model))
+            if instead is None:
+                return None
+            bad = {str(item["loc"][0]) if item["loc"] else _culprit(item) for item in items}
+            parts = {key: value for key, value in parts.items() if key not in bad}
+            parts |= {key: value for key, value in instead.items() if key in bad}
+        return None
 
     def unknown(self, path: Path, allowed: list[str]) -> None:
         """Note an unknown key."""
@@ -172,3 +198,8 @@ class Faults:
             self.add(
                 at, what=f"{shown(item['input'])} cannot be used here: {item['msg']}", fix="see the manual"
             )
+
+
+def _culprit(item: Any) -> str:  # noqa: ANN401 (an error of the validator)
+    cause = item.get("ctx", {}).get("error")
+    return str(cause.at[0]) if isinstance(cause, RefusedError) and cause.at else ""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, ClassVar, Literal
 
 from pydantic import BeforeValidator, Field, ValidationInfo, model_validator
 
@@ -55,6 +55,8 @@ class StrikeSpec(Part):
     ``time_s`` is the first touch, seconds after ``start``; ``direction`` a unit world vector, or None for
     the inward normal; ``angle_rad`` is measured from that normal.
     """
+
+    set_by_reader: ClassVar[frozenset[str]] = frozenset({"body_index"})
 
     body: str
     body_index: Annotated[int, BeforeValidator(whole(0, 10**6))] = Field(validation_alias="body index")

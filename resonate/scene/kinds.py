@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, ClassVar
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict
 
@@ -18,7 +18,14 @@ Quaternion = tuple[float, float, float, float]
 
 
 class Part(BaseModel):
-    """A frozen part of a scene; its fields carry units, their aliases are the keys of the file."""
+    """A frozen part of a scene; its fields carry units, their aliases are the keys of the file.
+
+    ``set_by_reader`` are fields that a file does not name itself, ``also_written`` keys that it may name
+    besides the fields.
+    """
+
+    set_by_reader: ClassVar[frozenset[str]] = frozenset({"kind"})
+    also_written: ClassVar[tuple[str, ...]] = ()
 
     model_config = ConfigDict(
         frozen=True, extra="forbid", validate_by_name=True, validate_by_alias=True, validate_default=False

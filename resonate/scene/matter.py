@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any, ClassVar
 
 from pydantic import BeforeValidator, Field, model_validator
 
@@ -82,6 +82,9 @@ class MaterialSpec(Part):
     ----------
     Lempriere, AIAA J. 6 (1968) 2226: bounds on the constants of orthotropic materials.
     """
+
+    set_by_reader: ClassVar[frozenset[str]] = frozenset({"name"})
+    also_written: ClassVar[tuple[str, ...]] = ("from",)
 
     name: str = "own"
     density_kg_m3: Annotated[float, BeforeValidator(number("density", above=0.0, most=1e5))] = Field(
@@ -216,6 +219,9 @@ class StrikerSpec(Part):
     In a scene: ``striker = "felt soft"``, ``{from = "felt soft", mass = "12 g"}`` or
     ``{mass = "12 g", tip_radius = "8 mm", tip_young = "2 MPa", restitution = 0.6}``.
     """
+
+    set_by_reader: ClassVar[frozenset[str]] = frozenset({"name"})
+    also_written: ClassVar[tuple[str, ...]] = ("from",)
 
     name: str = "own"
     mass_kg: Annotated[float, BeforeValidator(number("mass", above=0.0, most=1e4))] = Field(

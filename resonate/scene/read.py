@@ -9,7 +9,7 @@ from typing import Any, Final
 
 from resonate.errors import SceneError
 from resonate.scene.bodies import default_spot
-from resonate.scene.check import check_scene, check_strike
+from resonate.scene.check import check_scene, check_spot, check_strike
 from resonate.scene.clock import Clock
 from resonate.scene.faults import Faults, keys_of
 from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
@@ -22,7 +22,7 @@ from resonate.scene.names import choose, listing
 from resonate.scene.refused import Path, shown
 from resonate.scene.resolve import default_microphone, digest_of
 from resonate.scene.settings import LevelSpec, PictureSpec, SoundSpec, TakeSpec, WorldSpec
-from resonate.scene.spell import read_body, read_striker
+from resonate.scene.spell import ANY_SHAPE, read_body, read_striker
 
 _TOP: Final = ("title", "take", "picture", "sound", "world", "body", "strike", "mic")
 # Stands in for a refused striker, so that the rest of the strike is still checked.
@@ -113,7 +113,7 @@ def _load(text: str, where: str) -> dict[str, Any]:
     except ValueError as error:  # also a number of thousands of digits
         message = str(error)
         found = re.search(r"\(at line (\d+), column \d+\)", message)
-        line = int(found.group(1)) if found else text.count("\n") + 1
+        line = int(found.group(1)) if found else len(text.splitlines())
         reason = message.partition(" (at ")[0]
         raise SceneError(
             what=f"not TOML: {reason}", where=f"{where}:{line}", fix="correct the line; text stands in quotes"
@@ -149,11 +149,9 @@ class _Reading:
             self.faults.add(
                 (), what="no body in the scene", fix="add a [[body]] with name, shape and material"
             )
-        strikes = [self.strike(item, place, bodies, counting) for place, item in self.rows("strike")]
+        strikes = [self.strike(item, place, bodies, counting, clock) for place, item in self.rows("strike")]
         mics = [self.mic(item, place) for place, item in self.rows("mic")]
         check_scene(clock, sound, bodies, mics, self.faults)
-        for place, strike in enumerate(strikes):
-            check_strike(strike, place, bodies, clock, self.faults)
         if self.faults or not (take and picture and sound and world and clock and title):
             return None
         known = tuple(body for body in bodies if body is not None)
@@ -231,29 +229,36 @@ class _Reading:
         return None
 
     def strike(
-        self, value: object, place: int, bodies: list[BodySpec | None], counting: Picture | None
+        self,
+        value: object,
+        place: int,
+        bodies: list[BodySpec | None],
+        counting: Picture | None,
+        clock: Clock | None,
     ) -> StrikeSpec | None:
         path: Path = ("strike", place)
         table = self.faults.table(value, path, hint="begin it with [[strike]]")
         if table is None:
             return None
         parts = refuse_keys(table, "strike", path, self.faults)
-        parts.pop("body index", None)
+        if "body index" in parts:
+            self.faults.unknown((*path, "body index"), keys_of(StrikeSpec))
         index = self.body_index(parts, path)
-        sound = index is not None
         body = bodies[index] if index is not None and index < len(bodies) else None
         parts["body"] = body.name if body else "unknown"
         parts["body index"] = index or 0
-        spot = self.spot(parts.get("spot"), (*path, "spot"), body)
-        striker = (
-            read_striker(parts["striker"], (*path, "striker"), self.faults) if "striker" in parts else None
-        )
-        sound = sound and spot is not None and (striker is not None or "striker" not in parts)
-        parts["spot"] = spot or SpotSpec(name="centre")
+        parts["spot"] = self.spot(parts.get("spot"), (*path, "spot"), body)
         if "striker" in parts:
-            parts["striker"] = striker or _ANY_STRIKER
-        strike = self.faults.part(StrikeSpec, parts, path, context=counting)
-        return strike if sound else None
+            parts["striker"] = read_striker(parts["striker"], (*path, "striker"), self.faults) or _ANY_STRIKER
+        strike = self.faults.part(
+            StrikeSpec,
+            parts,
+            path,
+            context=counting,
+            instead={"time": 0, "speed": 1, "striker": _ANY_STRIKER},
+        )
+        check_strike(strike, place, clock, self.faults)
+        return strike
 
     def body_index(self, parts: dict[str, Any], path: Path) -> int | None:
         rows = self.document.get("body")
@@ -274,19 +279,24 @@ class _Reading:
         self.faults.add((*path, "body"), what=f"there is no body {shown(given)}", fix=fix)
         return None
 
-    def spot(self, value: object, path: Path, body: BodySpec | None) -> SpotSpec | None:
+    def spot(self, value: object, path: Path, body: BodySpec | None) -> SpotSpec:
+        shape = body.shape if body and body.shape is not ANY_SHAPE else None
         if value is None:
-            return SpotSpec(name=default_spot(body.shape) if body else "centre")
+            return SpotSpec(name=default_spot(shape) if shape else "centre")
+        spot: SpotSpec | None = None
         if isinstance(value, str):
-            return SpotSpec(name=value)
-        if isinstance(value, dict):
-            return self.faults.part(SpotSpec, value, path)
-        self.faults.add(
-            path,
-            what=f"{shown(value)} is not a spot",
-            fix='write "centre", {fraction = [0.3, 0.5]}, {point = [x, y, z]} or {toward = [x, y, z]}',
-        )
-        return None
+            spot = SpotSpec(name=value)
+        elif isinstance(value, dict):
+            spot = self.faults.part(SpotSpec, value, path)
+        else:
+            self.faults.add(
+                path,
+                what=f"{shown(value)} is not a spot",
+                fix='write "centre", {fraction = [0.3, 0.5]}, {point = [x, y, z]} or {toward = [x, y, z]}',
+            )
+        if spot and shape:
+            check_spot(spot, shape, path, self.faults)
+        return spot or SpotSpec(name="centre")
 
     def mic(self, value: object, place: int) -> MicSpec | None:
         path: Path = ("mic", place)
@@ -294,7 +304,10 @@ class _Reading:
         if table is None:
             return None
         table = refuse_keys(table, "mic", path, self.faults)
-        return self.faults.part(MicSpec, {"name": f"mic{place + 1}", **table}, path)
+        parts = {"name": f"mic{place + 1}", **table}
+        return self.faults.part(
+            MicSpec, parts, path, instead={"name": f"unnamed {place}", "place": [0.0, 0.0, 0.0]}
+        )
 
 
 def _clock(take: TakeSpec | None, picture: PictureSpec | None, sound: SoundSpec | None) -> Clock | None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING, Annotated, Any, Final, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
@@ -84,12 +85,9 @@ def _check_polygon(corners: list[tuple[float, float]]) -> None:
                 "leave one out; the outline closes by itself",
                 at=((k + 1) % count,),
             )
-    area = 0.5 * sum(
-        corners[k][0] * corners[(k + 1) % count][1] - corners[(k + 1) % count][0] * corners[k][1]
-        for k in range(count)
-    )
     size = max(max(axis) - min(axis) for axis in zip(*corners, strict=True))
-    if abs(area) < 1e-9 * size * size:  # the corners lie on one line, to rounding
+    far = max(corners, key=lambda corner: math.dist(corner, corners[0]))
+    if all(abs(_side(corners[0], far, corner)) < 1e-9 * size * size for corner in corners):
         raise RefusedError("the polygon has no area", "give corners that do not lie on one line")
     for k in range(count):
         for j in range(k + 1, count):
@@ -149,7 +147,9 @@ def _profile(value: object) -> Profile | tuple[tuple[float, ...], ...]:
         return ()
     rows: list[tuple[float, ...]] = []
     for place, row in enumerate(value):
-        if not isinstance(row, list | tuple) or len(row) not in (2, 3):
+        if isinstance(row, list | tuple) and len(row) == 2:  # noqa: PLR2004 (fraction and height)
+            raise RefusedError("a profile without width", "give the bar's width", at=(place,))
+        if not isinstance(row, list | tuple) or len(row) != 3:  # noqa: PLR2004 (with width)
             raise RefusedError(
                 f"{shown(row)} is not a profile entry",
                 "give [fraction, height] or [fraction, height, width]",
@@ -213,6 +213,12 @@ class BarShape(Part):
         # A profile entry without a width takes the bar's; a bar without a height takes the profile's.
         if not isinstance(data, dict) or not data.get("profile"):
             return data
+        if "diameter" in data or "diameter_m" in data:
+            raise RefusedError(
+                "a bar with both diameter and profile",
+                "give width and profile; a round bar has one diameter",
+                at=("profile",),
+            )
         width = data.get("width", data.get("width_m"))
         rows = [
             [*row, width] if isinstance(row, list | tuple) and len(row) == 2 and width is not None else row  # noqa: PLR2004
@@ -225,12 +231,8 @@ class BarShape(Part):
         if self.diameter_m is not None:
             extra = [
                 key
-                for key, value in (
-                    ("width", self.width_m),
-                    ("height", self.height_m),
-                    ("profile", self.profile),
-                )
-                if value
+                for key, value in (("width", self.width_m), ("height", self.height_m))
+                if value is not None
             ]
             if extra:
                 raise RefusedError(
@@ -246,9 +248,6 @@ class BarShape(Part):
                         f"a bar without {key}", "give width and height, or diameter", at=(key,)
                     )
             return self
-        for place, row in enumerate(self.profile):
-            if len(row) < 3:  # noqa: PLR2004 (fraction, height, width)
-                raise RefusedError("a profile without width", "give the bar's width", at=("profile", place))
         tallest = max(row[1] for row in self.profile)
         if self.height_m is not None and abs(self.height_m - tallest) > 1e-9 * tallest:
             raise RefusedError(

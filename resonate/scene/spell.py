@@ -27,7 +27,7 @@ from resonate.scene.matter import MaterialSpec, StrikerSpec
 from resonate.scene.names import choose, listing
 from resonate.scene.presets import resolved
 from resonate.scene.refused import Path, RefusedError, shown
-from resonate.scene.shapes import LATER_SHAPES, OUTLINES, SHAPES, BarShape
+from resonate.scene.shapes import LATER_SHAPES, OUTLINES, SHAPES, BarShape, edge_names
 
 if TYPE_CHECKING:
     from collections.abc import Collection
@@ -37,38 +37,33 @@ if TYPE_CHECKING:
 BODY_KEYS = keys_of(BodySpec)
 _SHAPE_KEYS = {kind: keys_of(model) for kind, model in SHAPES.items()}
 
-# Stand-ins for parts that were refused, so that the rest of the table is still checked.
-_ANY_SHAPE = BarShape(length_m=1.0, diameter_m=0.01)
+#: Stands in for a refused shape, so that the rest of the body is still checked.
+ANY_SHAPE = BarShape(length_m=1.0, diameter_m=0.01)
 _ANY_MATERIAL = MaterialSpec.model_validate({"density": 1000.0, "young": 1e9})
 
 
 def read_body(value: object, path: Path, faults: Faults) -> BodySpec | None:
-    """Read one ``[[body]]``; None when it has faults."""
+    """Read one ``[[body]]``; what is refused in it is noted and replaced by a stand-in."""
     table = faults.table(value, path, hint="begin it with [[body]]")
     if table is None:
         return None
     table = refuse_keys(table, "body", path, faults)
     parts: dict[str, Any] = {key: item for key, item in table.items() if key in BODY_KEYS}
     shape = _read_shape(table, path, faults)
-    sound = shape is not None
-    parts["shape"] = shape or _ANY_SHAPE
+    parts["shape"] = shape or ANY_SHAPE
     if "material" in table:
-        material = read_material(table["material"], (*path, "material"), faults)
-        sound = sound and material is not None
-        parts["material"] = material or _ANY_MATERIAL
+        parts["material"] = read_material(table["material"], (*path, "material"), faults) or _ANY_MATERIAL
     if "support" in table:
-        support = _read_support(table["support"], (*path, "support"), faults)
-        sound = sound and support is not None
-        parts["support"] = support
+        allowed = edge_names(shape) if shape else None
+        parts["support"] = _read_support(table["support"], allowed, (*path, "support"), faults)
     if shape is None or parts.get("support", ()) is None:
         parts["support"] = default_support(parts["shape"])
     for key, model in (("modes", BandSpec), ("show", ShowSpec)):
         if key in table:
-            part = _read_table(model, table[key], (*path, key), faults)
-            sound = sound and part is not None
-            parts[key] = part or model()
-    body = faults.part(BodySpec, parts, path)
-    return body if sound else None
+            parts[key] = _read_table(model, table[key], (*path, key), faults) or model()
+    return faults.part(
+        BodySpec, parts, path, instead={"name": f"unnamed {path[-1]}", "material": _ANY_MATERIAL}
+    )
 
 
 def _read_table(model: type[Part], value: object, path: Path, faults: Faults) -> Part | None:
@@ -216,7 +211,7 @@ def read_material(value: object, path: Path, faults: Faults) -> MaterialSpec | N
     except RefusedError as error:
         faults.refuse(path, error)
         return None
-    return faults.part(MaterialSpec, table, path, also=("from",))
+    return faults.part(MaterialSpec, table, path)
 
 
 def read_striker(value: object, path: Path, faults: Faults) -> StrikerSpec | None:
@@ -226,10 +221,12 @@ def read_striker(value: object, path: Path, faults: Faults) -> StrikerSpec | Non
     except RefusedError as error:
         faults.refuse(path, error)
         return None
-    return faults.part(StrikerSpec, table, path, also=("from",))
+    return faults.part(StrikerSpec, table, path)
 
 
-def _read_support(value: object, path: Path, faults: Faults) -> tuple[HoldSpec, ...] | None:
+def _read_support(
+    value: object, allowed: tuple[str, ...] | None, path: Path, faults: Faults
+) -> tuple[HoldSpec, ...] | None:
     if value == "free":
         return ()
     if isinstance(value, str):
@@ -250,19 +247,21 @@ def _read_support(value: object, path: Path, faults: Faults) -> tuple[HoldSpec, 
             fix='write "free", or a list of {where = .., hold = ..}',
         )
         return None
-    entries = [_read_entry(item, (*path, place), faults) for place, item in enumerate(value)]
+    entries = [_read_entry(item, allowed, (*path, place), faults) for place, item in enumerate(value)]
     kept = [entry for entry in entries if entry is not None]
     return tuple(kept) if len(kept) == len(entries) else None
 
 
-def _read_entry(value: object, path: Path, faults: Faults) -> HoldSpec | None:
+def _read_entry(
+    value: object, allowed: tuple[str, ...] | None, path: Path, faults: Faults
+) -> HoldSpec | None:
     table = faults.table(value, path, hint='write {where = "left", hold = "pinned"}')
     if table is None:
         return None
     parts = dict(table)
     sound = True
     if "where" in table:
-        where = _read_where(table["where"], (*path, "where"), faults)
+        where = _read_where(table["where"], allowed, (*path, "where"), faults)
         sound = where is not None
         parts["where"] = where or NamedPlace(names=("edge",))
     if "hold" in table:
@@ -273,14 +272,19 @@ def _read_entry(value: object, path: Path, faults: Faults) -> HoldSpec | None:
     return entry if sound else None
 
 
-def _read_where(value: object, path: Path, faults: Faults) -> Where | None:
+def _read_where(value: object, allowed: tuple[str, ...] | None, path: Path, faults: Faults) -> Where | None:
     hint = (
         "write an edge or end by name, a list of names, {point = [x, y, z]} or {box = [[x, y, z], [x, y, z]]}"
     )
-    if isinstance(value, str):
-        return NamedPlace(names=(value,))
-    if isinstance(value, list) and value and all(isinstance(name, str) for name in value):
-        return NamedPlace(names=tuple(value))
+    names = [value] if isinstance(value, str) else value
+    if isinstance(names, list) and names and all(isinstance(name, str) for name in names):
+        wrong = [name for name in names if allowed is not None and name not in allowed]
+        for name in wrong:
+            at = path if isinstance(value, str) else (*path, names.index(name))
+            faults.add(
+                at, what=f"{shown(name)} is not a place on this shape", fix=choose(name, allowed or ())
+            )
+        return None if wrong else NamedPlace(names=tuple(names))
     if isinstance(value, dict) and value.keys() == {"point"}:
         return faults.part(PointPlace, value, path)
     if isinstance(value, dict) and value.keys() == {"box"}:

@@ -13,7 +13,19 @@ from resonate.scene.refused import RefusedError
 
 DROP = FrameRate.read("30000/1001 drop")
 DROP60 = FrameRate.read("60000/1001 drop")
-RATES = ["24000/1001", 24, 25, "30000/1001", "30000/1001 drop", 30, 48, 50, "60000/1001", "60000/1001 drop", 60]
+RATES = [
+    "24000/1001",
+    24,
+    25,
+    "30000/1001",
+    "30000/1001 drop",
+    30,
+    48,
+    50,
+    "60000/1001",
+    "60000/1001 drop",
+    60,
+]
 
 # Drop-frame labels: SMPTE ST 12-1; numbers 00 and 01 are skipped each minute but every tenth.
 ANCHORS = [
@@ -130,7 +142,8 @@ def test_rates(given_rate, fraction, drop):
 
 
 @pytest.mark.parametrize(
-    "given_rate", [0, -24, 23, 29.5, "24/0", "24 drop", "24000/1001 drop", "48 drop", "fast", True, None, "25,0", 1e9]
+    "given_rate",
+    [0, -24, 23, 29.5, "24/0", "24 drop", "24000/1001 drop", "48 drop", "fast", True, None, "25,0", 1e9],
 )
 def test_other_rates_are_refused(given_rate):
     with pytest.raises(RefusedError, match="frame rate|drop-frame labels"):
@@ -204,7 +217,12 @@ def test_time_reference(rate, start, handles, sample_rate, expected):
 
 def test_timecode_of_delivered_frames():
     ticking = clock("30000/1001 drop", start="00:01:00;02", handles=2, length="1")
-    assert [ticking.timecode(k) for k in range(4)] == ["00:00:59;28", "00:00:59;29", "00:01:00;02", "00:01:00;03"]
+    assert [ticking.timecode(k) for k in range(4)] == [
+        "00:00:59;28",
+        "00:00:59;29",
+        "00:01:00;02",
+        "00:01:00;03",
+    ]
     assert clock(25, start="23:59:59:24", length="1").timecode(1) == "00:00:00:00"
 
 
@@ -223,4 +241,8 @@ def test_identities(rate, sample_rate, handles, length):
     over = ticking.end - handles / ticking.frame.fraction - length
     assert 0 <= over < 1 / ticking.frame.fraction
     # The last sample lies in the take, the next one does not.
-    assert ticking.sample_time(ticking.sample_count - 1) < ticking.end <= ticking.sample_time(ticking.sample_count)
+    assert (
+        ticking.sample_time(ticking.sample_count - 1)
+        < ticking.end
+        <= ticking.sample_time(ticking.sample_count)
+    )

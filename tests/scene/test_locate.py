@@ -86,8 +86,8 @@ TRICKY = [
     's = """a"""""\nx = 1',  # two quotes before the closing three
     "s = '''it''s'''\nx = 1",
     's = """\\"""\n x = 0 # """\nx = 1'.replace("\n x", " x"),
-    'k = {}\n[x]\n',
-    'l = []\nx = [[],[[]],{}]',
+    "k = {}\n[x]\n",
+    "l = []\nx = [[],[[]],{}]",
     "x = +1e5 # c\n\n\n#end",
     "'quoted key' = true\nx = false",
     '"" = 1\nx = 2',
