@@ -16,13 +16,13 @@ def nearest(name: str, allowed: Iterable[str]) -> str | None:
     'material'
     """
     known = list(allowed)
+    # A general word for a particular thing: "glass" for "soda-lime glass".
+    holding = [item for item in known if name.casefold() in item.casefold().split()]
+    if holding:
+        return holding[0]
     folded = {item.casefold(): item for item in known}
     found = difflib.get_close_matches(name.casefold(), list(folded), n=1, cutoff=0.6)
-    if found:
-        return folded[found[0]]
-    # A general word for a particular thing: "glass" for "soda-lime glass".
-    holding = [item for item in known if len(name) > 2 and name.casefold() in item.casefold().split()]  # noqa: PLR2004
-    return holding[0] if holding else None
+    return folded[found[0]] if found else None
 
 
 def listing(allowed: Iterable[str], *, most: int = 24) -> str:
