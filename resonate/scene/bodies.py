@@ -163,6 +163,20 @@ def _default_support(known: dict[str, Any]) -> tuple[HoldSpec, ...]:
 class BodySpec(Part):
     """``[[body]]``: ``name shape material support place turn speed spin modes floating held show``.
 
+    In a scene, with the keys of the shape beside the others (``shape = {plate = {..}}`` does the same)::
+
+        [[body]]
+        name = "hatch"
+        shape = "plate"
+        outline = {rectangle = ["0.6 m", "40 cm"]}
+        thickness = "3 mm"
+        material = {from = "oak", loss = 0.015}
+        support = [{where = ["x-", "x+"], hold = "pinned"}, {where = {point = [0, 0, 0.1]}, hold = {spring = "2 kN/m"}}]
+        place = [0, "1.2 m", 0]
+        turn = {axis = [1, 0, 0], angle = "90 deg"}
+        modes = {heard = "20 kHz", solved = "80 kHz", most = 300}
+        show = {ring = "readable", size = "1 %", most = 8}
+
     ``place_m`` puts the shape's own origin in the world, ``turn`` is a unit quaternion xyzw from
     body to world; ``speed_m_s`` and ``spin_rad_s`` are world vectors at the start.
     """

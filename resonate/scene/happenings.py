@@ -52,6 +52,16 @@ def _moment(value: object, info: ValidationInfo) -> float:
 class StrikeSpec(Part):
     """``[[strike]]``: ``body time spot striker speed direction angle``.
 
+    In a scene::
+
+        [[strike]]
+        body = "hatch"
+        time = "01:00:00:12"
+        spot = {fraction = [0.3, 0.5]}
+        striker = {from = "felt soft", mass = "40 g"}
+        speed = "1.5 m/s"
+        angle = "20 deg"
+
     ``time_s`` is the first touch, seconds after ``start``; ``direction`` a unit world vector, or None for
     the inward normal; ``angle_rad`` is measured from that normal.
     """

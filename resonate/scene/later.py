@@ -54,6 +54,8 @@ def refuse_keys(table: dict[str, Any], kind: str, path: Path, faults: Faults) ->
             del rest[key]
     if kind == "sound":
         _refuse_sound(rest, path, faults)
+    if kind == "mic" and "array" in table:
+        rest.setdefault("place", [0.0, 0.0, 0.0])  # an array has its own places
     if kind == "mic" and "pattern" in rest and rest["pattern"] != "omni":
         faults.add(
             (*path, "pattern"),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import tomllib
+from dataclasses import dataclass
 from functools import cache
 from importlib import resources
 from pathlib import Path
@@ -166,3 +167,38 @@ def list_presets(kind: str) -> tuple[MaterialSpec, ...] | tuple[StrikerSpec, ...
     if kind == "strikers":
         return tuple(striker(name) for name in tables("strikers"))
     raise SceneError(what=f"{kind!r} is not a kind of preset", where="presets", fix=choose(kind, KINDS))
+
+
+@dataclass(frozen=True, slots=True)
+class PresetTable:
+    """Presets of one kind as text: ``headings`` and one tuple a row, of the same length."""
+
+    headings: tuple[str, ...]
+    rows: tuple[tuple[str, ...], ...]
+
+
+def preset_rows(kind: str) -> PresetTable:
+    """Lay out the presets of a kind for reading; three directions stand as three values.
+
+    Raises
+    ------
+    SceneError
+        If there is no such kind.
+    """
+    rows: list[tuple[str, ...]] = []
+    for preset in list_presets(kind):
+        if isinstance(preset, MaterialSpec):
+            many = 1 if preset.isotropic else 3
+            young = " / ".join(f"{value / 1e9:.3g}" for value in preset.young_pa[:many])
+            poisson = " / ".join(f"{value:.3g}" for value in preset.poisson[:many])
+            loss = " / ".join(f"{eta:.2g}" for _, eta in preset.loss)
+            rows.append((preset.name, f"{preset.density_kg_m3:.4g}", young, poisson, loss, preset.source))
+        else:
+            numbers = (1e3 * preset.mass_kg, 1e3 * preset.tip_radius_m, preset.tip_young_pa / 1e6)
+            values = tuple(f"{value:.3g}" for value in (*numbers, preset.restitution))
+            rows.append((preset.name, *values, preset.source))
+    if kind == "materials":
+        return PresetTable(("name", "density kg/m^3", "young GPa", "poisson", "loss", "source"), tuple(rows))
+    return PresetTable(
+        ("name", "mass g", "tip radius mm", "tip young MPa", "restitution", "source"), tuple(rows)
+    )

@@ -5,25 +5,44 @@ from __future__ import annotations
 import dataclasses
 import hashlib
 import json
+import math
 from fractions import Fraction
 from typing import TYPE_CHECKING, Any
 
 from pydantic import BaseModel
 
 from resonate.scene.happenings import MicSpec
-from resonate.scene.shapes import is_line
+from resonate.scene.shapes import PolygonOutline, is_line
 
 if TYPE_CHECKING:
     from resonate.scene.bodies import BodySpec
     from resonate.scene.kinds import Quaternion, Triple
 
 
+_DIAGONAL = math.sqrt(0.5)
+
+
 def default_microphone(body: BodySpec) -> MicSpec:
-    """One omni, 1 m in front of the body: along its +z for lines, its +y for plates and membranes."""
-    front = (0.0, 0.0, 1.0) if is_line(body.shape) else (0.0, 1.0, 0.0)
-    x, y, z = rotated(front, body.turn)
+    """One omni, 1 m from the middle of the body.
+
+    In front of plates and membranes it stands along their +y; lines are heard from between +y and +z, because
+    a line that bends in one plane alone is not heard at all from straight across that plane.
+    """
+    front = (0.0, _DIAGONAL, _DIAGONAL) if is_line(body.shape) else (0.0, 1.0, 0.0)
+    middle = _middle(body.shape)
+    x, y, z = rotated((middle[0] + front[0], middle[1] + front[1], middle[2] + front[2]), body.turn)
     place = body.place_m
     return MicSpec(name="front", place_m=(place[0] + x, place[1] + y, place[2] + z))
+
+
+def _middle(shape: Any) -> Triple:  # noqa: ANN401 (any member of the union)
+    # In the body frame: lines begin at their left end, polygons where their corners are measured from.
+    if is_line(shape):
+        return 0.5 * shape.length_m, 0.0, 0.0
+    if isinstance(shape.outline, PolygonOutline):
+        x, z = ([corner[axis] for corner in shape.outline.corners_m] for axis in (0, 1))
+        return 0.5 * (min(x) + max(x)), 0.0, 0.5 * (min(z) + max(z))
+    return 0.0, 0.0, 0.0
 
 
 def rotated(vector: Triple, turn: Quaternion) -> Triple:

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import json
 import re
 
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from resonate.errors import SceneError
 from resonate.scene.read import parse_scene, read_scene
@@ -174,6 +177,7 @@ CASES = [
     ('speed = "1.5 m/s"', "speed = 1\nstays = true", "strike[0].stays", 29, "not in this version", "leaves"),
     ("place = [0, 1, 0]", 'place = [0, 1, 0]\npattern = "cardioid"', "mic[0].pattern", 31, "not in this version",
      "omni"),
+    ("place = [0, 1, 0]", "array = {kind = 'pair'}", "mic[0].array", 30, "not in this version", "single microphones"),
     ("place = [0, 1, 0]", "place = [0, 1, 0]\n[ground]\nheight = 0", "ground", 31, "not in this version", "remove"),
     ("place = [0, 1, 0]", "place = [0, 1, 0]\n[vary]\ncount = 9", "vary", 31, "not in this version", "remove"),
     ("place = [0, 1, 0]", "place = [0, 1, 0]\n[[pluck]]\nbody = 0", "pluck", 31, "not in this version", "remove"),
@@ -272,3 +276,55 @@ def test_files_that_cannot_be_read(tmp_path):
         read_scene(tmp_path / "empty.toml")
     with pytest.raises(SceneError, match="cannot be read|no such file"):
         read_scene("bad\0name.toml")
+
+
+VALUES = st.recursive(
+    st.sampled_from(
+        ["0", "-1", "nan", "-inf", "1e308", "true", '""', '"x"', "'3 mm'", "'free'", "07:32:00", "1979-05-27"]
+    )
+    | st.integers().map(str)
+    | st.text(max_size=8).map(
+        lambda text: json.dumps(text.encode("utf-8", "ignore").decode().replace("\x7f", ""))
+    ),
+    lambda inner: (
+        st.lists(inner, max_size=4).map(lambda items: "[" + ", ".join(items) + "]")
+        | st.dictionaries(
+            st.sampled_from(
+                [
+                    "kind",
+                    "from",
+                    "fix",
+                    "spring",
+                    "point",
+                    "box",
+                    "rectangle",
+                    "polygon",
+                    "axis",
+                    "peak",
+                    "bar",
+                ]
+            ),
+            inner,
+            max_size=3,
+        ).map(lambda table: "{" + ", ".join(f"{key} = {value}" for key, value in table.items()) + "}")
+    ),
+    max_leaves=8,
+)
+KEYS = sorted(
+    {line.split(" = ")[0] for line in SOUND.splitlines() if " = " in line} | {"turn", "show", "level", "mic"}
+)
+
+
+@settings(max_examples=300, deadline=None)
+@given(line=st.integers(0, SOUND.count("\n") - 1), key=st.sampled_from(KEYS), value=VALUES)
+def test_whatever_stands_in_a_line_is_read_or_refused_in_full(line, key, value):
+    lines = SOUND.splitlines()
+    lines[line] = f"{key} = {value}"
+    try:
+        parse_scene("\n".join(lines), where="galley.toml")
+    except SceneError as error:
+        for fault in error.faults:
+            assert re.match(r"galley\.toml:\d+", fault.where)
+            assert fault.what
+            assert fault.fix
+            assert "cannot be used here" not in fault.what  # a reason of our own, not the validator's

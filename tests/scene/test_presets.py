@@ -7,7 +7,7 @@ import math
 import pytest
 
 from resonate.errors import SceneError
-from resonate.scene.presets import list_presets, material, striker, tables
+from resonate.scene.presets import list_presets, material, preset_rows, striker, tables
 from resonate.scene.read import parse_scene
 
 MATERIALS = list_presets("materials")
@@ -232,6 +232,14 @@ def test_unknown_strikers_are_refused_with_the_nearest_name():
 def test_names_do_not_mind_case_and_dashes():
     assert material("Soda Lime Glass") == material("soda-lime glass")
     assert striker("Felt_soft") == striker("felt soft")
+
+
+@pytest.mark.parametrize(("kind", "count"), [("materials", len(MATERIALS)), ("strikers", len(STRIKERS))])
+def test_tables_for_reading(kind, count):
+    table = preset_rows(kind)
+    assert len(table.rows) == count
+    assert {len(row) for row in table.rows} == {len(table.headings)}
+    assert ("7850" if kind == "materials" else "7.5") in table.rows[0]
 
 
 def test_an_unknown_kind_is_refused():

@@ -275,6 +275,19 @@ def test_the_default_microphone_is_1_m_in_front():
     assert mic.pattern == "omni"
 
 
+@pytest.mark.parametrize(
+    ("shape", "place"),
+    [
+        # Half way between +y and +z, 1 m from the middle.
+        ("shape = 'bar'\nlength = 2\ndiameter = 0.01\n", (1, math.sqrt(0.5), math.sqrt(0.5))),
+        ("shape = 'plate'\nthickness = 0.01\noutline = {polygon = [[1, 1], [3, 1], [1, 5]]}\n", (2, 1, 3)),
+    ],
+)
+def test_it_stands_off_the_middle_of_the_body(shape, place):
+    (mic,) = parse_scene(HEAD + shape).mics
+    assert mic.place_m == pytest.approx(place)
+
+
 def test_a_strike_names_its_body_by_name_or_number_and_may_leave_out_the_only_one():
     text = TIMED.format(length=3, rate=24, start=0, time=0).replace("handles = 24\n", "")
     strikes = [
