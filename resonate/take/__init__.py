@@ -1,0 +1,1 @@
+"""The delivered folder: wave, tables, motion, manifest, and the check that measures them again."""

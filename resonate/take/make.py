@@ -1,0 +1,177 @@
+"""From a scene to a take: one run, and every file from its states."""
+
+from __future__ import annotations
+
+import dataclasses
+from pathlib import Path
+from typing import TYPE_CHECKING, Final
+
+from resonate.take.folder import building, safe_name
+
+if TYPE_CHECKING:
+    from collections.abc import Callable, Sequence
+
+    from resonate.body.body import Body
+    from resonate.field.transfer import Transfer
+    from resonate.modes.modeset import ModeSet
+    from resonate.modes.store import ModeStore
+    from resonate.run.record import Record
+    from resonate.scene.model import Scene
+    from resonate.take.folder import Building
+
+    Progress = Callable[[str], None]
+
+#: What follows NAME in the name of each file.
+ENDINGS: Final = {
+    "wav": ".wav",
+    "curves": ".curves.csv",
+    "events": ".events.csv",
+    "glb": ".glb",
+    "manifest": ".json",
+}
+
+
+def make_take(
+    scene: Scene,
+    *,
+    out: Path | str,
+    replace: bool = False,
+    store: ModeStore | None = None,
+    progress: Progress | None = None,
+) -> Path:
+    """Run a scene once and write its take.
+
+    Parameters
+    ----------
+    scene : Scene
+        What to make; ``scene.take.files`` says which files.
+    out : Path or str
+        Folder that holds takes; made if it is missing.
+    replace : bool
+        Whether a take of the same name gives way once the new one is whole.
+    store : ModeStore, optional
+        Where solved modes are kept.
+    progress : Callable[[str], None], optional
+        Told in a few words what begins, and every warning as ``warning: ...``.
+
+    Returns
+    -------
+    Path
+        The folder of the take.
+
+    Raises
+    ------
+    TakeError
+        If the take cannot be written or would clip. Nothing is left behind.
+    ResonateError
+        Whatever a body, its modes or the run refuse.
+    """
+    name = safe_name(scene.title)
+    tell = progress or _say_nothing
+    with building(Path(out), name, digest=scene.digest, replace=replace) as place:
+        bodies, modes = solve_bodies(scene, store=store, progress=tell)
+        tell("running")
+        from resonate.run.engine import run  # noqa: PLC0415 (heavy)
+
+        record = run(scene, bodies, modes, store=store)
+        _write_files(place, scene, record, bodies=bodies, modes=modes, store=store, progress=tell)
+    return Path(out) / name
+
+
+def _say_nothing(_: str) -> None:
+    """Tell nobody."""
+
+
+def solve_bodies(
+    scene: Scene, *, store: ModeStore | None, progress: Progress
+) -> tuple[tuple[Body, ...], tuple[ModeSet, ...]]:
+    """Build every body and find its modes; bodies that are alike are solved once."""
+    from resonate.body.build import build_body  # noqa: PLC0415 (heavy)
+    from resonate.modes.solve import solve_modes, solved_hz  # noqa: PLC0415 (heavy)
+    from resonate.modes.store import modes_key  # noqa: PLC0415 (heavy)
+
+    bodies: list[Body] = []
+    modes: list[ModeSet] = []
+    known: dict[str, ModeSet] = {}
+    world = scene.world
+    for spec in scene.bodies:
+        progress(f"modes of {spec.name}")
+        body = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)
+        key = modes_key(body, solved_hz=solved_hz(body))
+        if key not in known:
+            known[key] = solve_modes(body, store=store)
+        bodies.append(body)
+        modes.append(_renamed(known[key], body.name))
+    return tuple(bodies), tuple(modes)
+
+
+def _renamed(modes: ModeSet, name: str) -> ModeSet:
+    if modes.body == name:
+        return modes
+    notes = tuple(note.replace(f"body {modes.body!r}", f"body {name!r}") for note in modes.warnings)
+    return dataclasses.replace(modes, body=name, warnings=notes)
+
+
+def _write_files(
+    place: Building,
+    scene: Scene,
+    record: Record,
+    *,
+    bodies: Sequence[Body],
+    modes: Sequence[ModeSet],
+    store: ModeStore | None,
+    progress: Progress,
+) -> None:
+    from resonate.motion.curves import curves as trace  # noqa: PLC0415 (heavy)
+    from resonate.take.deliver import write_sound  # noqa: PLC0415 (heavy)
+    from resonate.take.glb import write_glb  # noqa: PLC0415 (heavy)
+    from resonate.take.manifest import write_manifest  # noqa: PLC0415 (heavy)
+    from resonate.take.tables import write_curves, write_events  # noqa: PLC0415 (heavy)
+
+    path = {kind: place.file(ENDINGS[kind]) for kind in scene.take.files}
+    warnings = [*_notes(modes, store), *record.warnings]
+    heard = None
+    if "wav" in path:
+        progress("sound")
+        transfers = _transfers(scene, bodies, modes)
+        warnings.extend(note for transfer in transfers for note in transfer.warnings)
+        heard = write_sound(path["wav"], scene, record, transfers)
+    motion = None
+    if "curves" in path or "glb" in path:
+        progress("motion")
+        motion = trace(record, bodies, scene)
+    if motion is not None and "curves" in path:
+        write_curves(path["curves"], motion, scene)
+    if motion is not None and "glb" in path:
+        write_glb(path["glb"], motion, scene, record)
+    if "events" in path:
+        write_events(path["events"], record, scene)
+    warnings = list(dict.fromkeys(warnings))
+    for note in warnings:
+        progress(f"warning: {note}")
+    if "manifest" in path:
+        write_manifest(
+            path["manifest"],
+            scene,
+            record,
+            bodies=bodies,
+            modes=modes,
+            heard=heard,
+            curves=motion,
+            warnings=warnings,
+            files=[file for kind, file in path.items() if kind != "manifest"],
+        )
+
+
+def _transfers(scene: Scene, bodies: Sequence[Body], modes: Sequence[ModeSet]) -> list[Transfer]:
+    from resonate.field.air import Air  # noqa: PLC0415 (heavy)
+    from resonate.field.transfer import transfer_for  # noqa: PLC0415 (heavy)
+
+    air = Air.of(scene.world)
+    return [transfer_for(body, found, air) for body, found in zip(bodies, modes, strict=True)]
+
+
+def _notes(modes: Sequence[ModeSet], store: ModeStore | None) -> list[str]:
+    # Trouble with the store is the machine's, not the take's: it must not change a byte.
+    machine = str(store.path) if store is not None else None
+    return [note for found in modes for note in found.warnings if machine is None or machine not in note]
