@@ -171,7 +171,10 @@ class BodySpec(Part):
         outline = {rectangle = ["0.6 m", "40 cm"]}
         thickness = "3 mm"
         material = {from = "oak", loss = 0.015}
-        support = [{where = ["x-", "x+"], hold = "pinned"}, {where = {point = [0, 0, 0.1]}, hold = {spring = "2 kN/m"}}]
+        support = [
+            {where = ["x-", "x+"], hold = "pinned"},
+            {where = {point = [0, 0, 0.1]}, hold = {spring = "2 kN/m", damper = 3}},
+        ]
         place = [0, "1.2 m", 0]
         turn = {axis = [1, 0, 0], angle = "90 deg"}
         modes = {heard = "20 kHz", solved = "80 kHz", most = 300}

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from fractions import Fraction
+from itertools import pairwise
 
 import pytest
 from hypothesis import given
@@ -88,7 +89,7 @@ def test_the_cadence_of_29_97_at_48_khz():
     # 1602, 1601, 1602, 1601, 1602 samples: 8008 in five frames.
     ticking = clock("30000/1001", length="10")
     ends = [round(ticking.frame_time(k) * 48000) for k in range(6)]
-    assert [b - a for a, b in zip(ends, ends[1:], strict=False)] == [1602, 1601, 1602, 1601, 1602]
+    assert [b - a for a, b in pairwise(ends)] == [1602, 1601, 1602, 1601, 1602]
 
 
 @pytest.mark.parametrize("label", ["00:01:00;00", "00:01:00;01", "00:01:00:00", "23:59:00;01"])

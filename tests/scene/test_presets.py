@@ -104,7 +104,8 @@ def test_metal_losses_lie_in_the_published_ranges(name, least, most):
 
 
 def test_zinc_and_tin_are_not_the_misprint():
-    # Some tables print moduli a factor of ten too low (13.1 and 4.4 GPa); the sound speeds say 105 and 54 GPa.
+    # Some tables print moduli a factor of ten too low (13.1 and 4.4 GPa);
+    # the sound speeds say 105 and 54 GPa.
     assert material("zinc").young_pa[0] > 50e9
     assert material("tin").young_pa[0] > 25e9
 
@@ -155,7 +156,8 @@ def test_each_material_is_a_real_solid(preset):
 
 # Dulong and Petit: metals hold about 25 J/(mol K). Molar masses in kg/mol: IUPAC (2021).
 MOLAR = [
-    ("aluminium", 0.0269815), ("copper", 0.063546), ("gold", 0.196967), ("silver", 0.107868), ("lead", 0.2072),
+    ("aluminium", 0.0269815), ("copper", 0.063546), ("gold", 0.196967), ("silver", 0.107868),
+    ("lead", 0.2072),
     ("tin", 0.11871), ("zinc", 0.06538), ("titanium", 0.047867), ("tungsten", 0.18384), ("nickel", 0.058693),
     ("magnesium", 0.024305), ("platinum", 0.195084), ("iron", 0.055845),
 ]  # fmt: skip

@@ -73,7 +73,8 @@ def test_outlines(text, expected):
 def test_profiles_of_bars():
     undercut = body(
         "shape = 'bar'\nlength = 0.3\nwidth = '30 mm'\n"
-        "profile = [[0, '20 mm'], [0.35, '20 mm'], [0.35, 0.008], [0.65, 0.008], [0.65, 0.02], ['100 %', 0.02, 0.025]]"
+        "profile = [[0, '20 mm'], [0.35, '20 mm'], [0.35, 0.008], "
+        "[0.65, 0.008], [0.65, 0.02], ['100 %', 0.02, 0.025]]"
     ).shape
     assert undercut.profile[1:3] == ((0.35, 0.02, 0.03), (0.35, 0.008, 0.03))
     assert undercut.profile[-1] == (1.0, 0.02, 0.025)
@@ -117,8 +118,8 @@ def test_impossible_sections(shape, words):
 def test_supports():
     shape = "shape = 'plate'\nthickness = 0.002\noutline = {rectangle = [1, 1]}\nsupport = "
     entries = body(
-        shape
-        + "[{where = ['x-', 'x+'], hold = 'pinned'}, {where = {point = [0, 0, '10 cm']}, hold = {spring = '2 kN/m', "
+        shape + "[{where = ['x-', 'x+'], hold = 'pinned'}, "
+        "{where = {point = [0, 0, '10 cm']}, hold = {spring = '2 kN/m', "
         "damper = 3}}, {where = {box = [[0, 0, 0], [1, 1, 1]]}, hold = {fix = ['rx', 'y']}}, "
         "{where = 'z-', hold = {cord = '50 cm'}}]"
     ).support

@@ -138,7 +138,7 @@ def test_a_bare_number_and_its_text_come_back_unchanged(value):
 @given(st.text(max_size=30))
 def test_any_text_is_read_or_refused(text):
     try:
-        assert math.isfinite(quantity(text, "pressure"))
-    except RefusedError as error:
-        assert error.what
-        assert error.fix
+        value = quantity(text, "pressure")
+    except RefusedError as refusal:
+        value = 0.0 if refusal.what and refusal.fix else math.nan
+    assert math.isfinite(value)
