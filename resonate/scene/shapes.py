@@ -197,7 +197,7 @@ class BarShape(Part):
     """``length, width, height`` or ``length, diameter``; ``profile`` for tapers and undercuts.
 
     x runs along the bar from its left end; the height is along y, the width along z. A ``profile`` entry
-    is (fraction of the length, height, width); ``height_m`` is then the largest.
+    is (fraction of the length, height, width); ``height_m`` and ``width_m`` may then be None.
     """
 
     kind: Literal["bar"] = "bar"
@@ -210,7 +210,7 @@ class BarShape(Part):
     @model_validator(mode="before")
     @classmethod
     def _widen(cls, data: object) -> object:
-        # A profile entry without a width takes the bar's; a bar without a height takes the profile's.
+        # A profile entry without a width takes the bar's.
         if not isinstance(data, dict) or not data.get("profile"):
             return data
         if "diameter" in data or "diameter_m" in data:
