@@ -27,7 +27,7 @@ if TYPE_CHECKING:
 def residual_compliance(
     body: Body, modes: ModeSet, rows: csr_matrix | Array, *, store: ModeStore | None = None
 ) -> Array:
-    """Static compliance of the missing modes, for forces along some rows.
+    """Find the static compliance of the missing modes for forces along some rows.
 
     The part of the force that drives rigid motions and solved modes is taken off first,
     ``r' = r - M Phi Phi^T r``; then ``r'^T (K + s M)^-1 r'`` is what only the missing modes answer,

@@ -69,7 +69,7 @@ def _symmetric(matrix: csr_matrix, *, name: str, where: str) -> csr_matrix:
         )
     if not np.all(np.isfinite(checked.data)):
         raise ModesError(
-            what=f"{np.count_nonzero(~np.isfinite(checked.data))} entries of the {name} matrix are not finite",
+            what=f"entries of the {name} matrix that are not finite: {np.sum(~np.isfinite(checked.data))}",
             where=where,
             fix="look for a zero thickness, length or density, or an element that is folded over",
         )
@@ -141,7 +141,7 @@ def check_mass(pencil: Pencil) -> None:
     negative = factorise(pencil.mass, definite=True).negative
     if negative != 0:
         raise ModesError(
-            what=f"the mass matrix has {negative if negative else 'some'} eigenvalues that are not positive",
+            what=f"the mass matrix has {negative or 'some'} eigenvalues that are not positive",
             where=pencil.where,
             fix="some motion has no kinetic energy: refine the quadrature or give every part a density",
         )

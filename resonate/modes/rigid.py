@@ -1,4 +1,4 @@
-"""Motions that cost no strain energy: found by inverse iteration, told apart from slow modes by rounding."""
+"""Motions that cost no strain energy, told apart from slow modes by rounding error."""
 
 from __future__ import annotations
 
@@ -57,9 +57,9 @@ def rigid_motions(
     """Find every motion without strain energy.
 
     A few inverse iterations on a random block turn it into the softest motions there are; one
-    counts as rigid when its strain energy is lost in the rounding of the stiffness matrix itself. That bound is
-    absolute for the matrix at hand, so that a body swinging slowly on cords is not taken for one
-    that floats.
+    counts as rigid when its strain energy is lost in the rounding of the stiffness matrix itself.
+    That bound is absolute for the matrix at hand, so that a body swinging slowly on cords is not
+    taken for one that floats.
 
     Parameters
     ----------

@@ -50,7 +50,7 @@ class _Found:
 
 
 def solved_hz(body: Body) -> float:
-    """The frequency, Hz, up to which modes are asked for."""
+    """Tell the frequency, Hz, up to which modes are asked for."""
     bands = body.bands
     return SOLVED_TIMES_HEARD * bands.heard_hz if bands.solved_hz is None else bands.solved_hz
 
@@ -228,8 +228,6 @@ def _warnings(body: Body, omega: Array, *, whole: bool, asked: float, next_hz: f
         )
     first_hz = float(frequency_hz[0]) if len(omega) else next_hz
     if first_hz > body.bands.heard_hz:
-        where = f"its first mode is at {first_hz:.0f} Hz" if np.isfinite(first_hz) else "it has no mode at all"
-        notes.append(
-            f"{where}, above the {body.bands.heard_hz:.0f} Hz that are heard: it will not ring"
-        )
+        what = f"its first mode is at {first_hz:.0f} Hz" if np.isfinite(first_hz) else "it has no mode at all"
+        notes.append(f"{what}, above the {body.bands.heard_hz:.0f} Hz that are heard: it will not ring")
     return tuple(notes)

@@ -197,7 +197,7 @@ def lowest(pencil: Pencil, *, most: int, top: float, free: bool) -> Spectrum:
     factor = factorise(pencil.shifted(pencil.small_shift), definite=True)
     if factor.negative != 0:
         raise ModesError(
-            what=f"the stiffness has {factor.negative or 'some'} negative eigenvalues: at rest the body is unstable",
+            what=f"{factor.negative or 'some'} negative eigenvalues: at rest the body is unstable",
             where=pencil.where,
             fix="look for compression (a negative tension) or a material that is not positive definite",
         )

@@ -34,6 +34,7 @@ FORMAT = 1
 # Raise it when the solver would give other modes or decays for the same body.
 SOLVER = 1
 CAUSES = ("material", "thermoelastic", "support", "radiation")
+FACTS = ("body", "key", "heard", "heard_hz", "solved_hz", "swing")
 # What a damaged archive can raise, from the zip directory down to the text of an array header.
 DAMAGE = (
     OSError,
@@ -96,7 +97,7 @@ class ModeStore:
         object.__setattr__(self, "path", Path(self.path))
 
     def place(self, kind: str, key: str) -> Path:
-        """The file of one entry."""
+        """Name the file of one entry."""
         return self.path / f"{kind}-{key}.npz"
 
     def load(self, kind: str, key: str) -> Entry | None:
@@ -104,7 +105,12 @@ class ModeStore:
         try:
             with warnings.catch_warnings():
                 warnings.simplefilter("ignore")  # numpy's remarks about damaged headers
-                with np.load(self.place(kind, key), allow_pickle=False) as archive:
+                with (
+                    self.place(kind, key).open(
+                        "rb"
+                    ) as file,  # numpy leaves it open when the archive is broken
+                    np.load(file, allow_pickle=False) as archive,
+                ):
                     arrays = {name: archive[name] for name in archive.files}
             header = json.loads(arrays.pop("header").tobytes())
             facts = header.pop("facts")
@@ -154,7 +160,7 @@ class ModeStore:
 
 
 def default_store() -> ModeStore:
-    """The store in ``RESONATE_CACHE`` if that is set, else in the user's cache folder."""
+    """Name the store in ``RESONATE_CACHE`` if that is set, else in the user's cache folder."""
     given = os.environ.get("RESONATE_CACHE", "")
     if given:
         return ModeStore(Path(given) / "modes")
@@ -193,7 +199,7 @@ def load_modes(store: ModeStore, key: str) -> ModeSet | None:
             residual=entry.arrays["residual"],
             decay=Decay(**{cause: rates[number] for number, cause in enumerate(CAUSES)}),
             warnings=tuple(entry.facts["warnings"]),
-            **{name: entry.facts[name] for name in ("body", "key", "heard", "heard_hz", "solved_hz", "swing")},
+            **{name: entry.facts[name] for name in FACTS},
         )
     except (KeyError, IndexError, TypeError):
         return None  # a sound entry of another layout
@@ -203,6 +209,5 @@ def save_modes(store: ModeStore, key: str, modes: ModeSet) -> str:
     """Keep modes under ``key``; the answer is empty or a warning."""
     arrays = {name: getattr(modes, name) for name in ("omega", "shape", "rigid", "residual")}
     arrays["decay"] = np.stack([getattr(modes.decay, cause) for cause in CAUSES])
-    names = ("body", "key", "heard", "heard_hz", "solved_hz", "swing")
-    facts = {name: getattr(modes, name) for name in names}
+    facts = {name: getattr(modes, name) for name in FACTS}
     return store.save("modes", key, arrays, facts={**facts, "warnings": list(modes.warnings)})

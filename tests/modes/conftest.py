@@ -72,12 +72,20 @@ def beam(elements, *, length_m=1.0, bending_nm2=1.0, line_density_kg_m=1.0):
     """A free Euler-Bernoulli beam in one plane: cubic elements, consistent mass."""
     h = length_m / elements
     stiff = np.array(
-        [[12, 6 * h, -12, 6 * h], [6 * h, 4 * h**2, -6 * h, 2 * h**2], [-12, -6 * h, 12, -6 * h],
-         [6 * h, 2 * h**2, -6 * h, 4 * h**2]]
+        [
+            [12, 6 * h, -12, 6 * h],
+            [6 * h, 4 * h**2, -6 * h, 2 * h**2],
+            [-12, -6 * h, 12, -6 * h],
+            [6 * h, 2 * h**2, -6 * h, 4 * h**2],
+        ]
     ) * (bending_nm2 / h**3)
     heavy = np.array(
-        [[156, 22 * h, 54, -13 * h], [22 * h, 4 * h**2, 13 * h, -3 * h**2], [54, 13 * h, 156, -22 * h],
-         [-13 * h, -3 * h**2, -22 * h, 4 * h**2]]
+        [
+            [156, 22 * h, 54, -13 * h],
+            [22 * h, 4 * h**2, 13 * h, -3 * h**2],
+            [54, 13 * h, 156, -22 * h],
+            [-13 * h, -3 * h**2, -22 * h, 4 * h**2],
+        ]
     ) * (line_density_kg_m * h / 420)
     size = 2 * elements + 2
     stiffness, mass = np.zeros((2, size, size))

@@ -53,16 +53,17 @@ def test_rayleigh_damping_passes_through_its_two_points(make):
     rows = sp.vstack([sp.identity(30), strain])
     dampers = np.r_[np.full(30, alpha), np.full(31, beta * 1e9)]
 
-    modes = solve_modes(
-        make.Body(stiffness, mass, damper_rows=sp.csr_matrix(rows), damper_ns_m=dampers)
-    )
+    modes = solve_modes(make.Body(stiffness, mass, damper_rows=sp.csr_matrix(rows), damper_ns_m=dampers))
 
     zeta = modes.decay.support / modes.omega
     np.testing.assert_allclose(zeta, alpha / (2 * modes.omega) + beta * modes.omega / 2, rtol=1e-9)
     checks = {200.0: 0.005, 2000.0: 0.005, 632.0: 0.0028747979, 8000.0: 0.018295455}
     for hertz, expected in checks.items():
         one = resonator(
-            make, hertz, damper_rows=sp.csr_matrix([[1.0], [TWO_PI * hertz]]), damper_ns_m=np.array([alpha, beta])
+            make,
+            hertz,
+            damper_rows=sp.csr_matrix([[1.0], [TWO_PI * hertz]]),
+            damper_ns_m=np.array([alpha, beta]),
         )
         found = solve_modes(one).decay.support[0] / (TWO_PI * hertz)
         # 632 Hz stands for the geometric mean, 632.456 Hz, where the curve is flat.
@@ -135,7 +136,10 @@ def test_constant_loss_needs_no_meaningful_frequency():
 def test_support_loss_is_the_work_of_the_dashpot(make):
     # One mass, one dashpot: exact decay of an underdamped oscillator is c / (2 m).
     body = make.Body(
-        sp.csr_matrix([[50.0]]), sp.csr_matrix([[2.0]]), damper_rows=sp.csr_matrix([[1.0]]), damper_ns_m=np.array([3.0])
+        sp.csr_matrix([[50.0]]),
+        sp.csr_matrix([[2.0]]),
+        damper_rows=sp.csr_matrix([[1.0]]),
+        damper_ns_m=np.array([3.0]),
     )
 
     np.testing.assert_allclose(solve_modes(body).decay.support, [3.0 / 4.0], rtol=1e-12)
@@ -168,7 +172,9 @@ def test_cords_have_no_material_loss(make):
     # Half the stiffness of the one mass is the cord's: half the loss is left.
     body = resonator(make, 100.0, loss=((1.0, 0.02),), cords=sp.csr_matrix([[0.5 * (TWO_PI * 100.0) ** 2]]))
 
-    np.testing.assert_allclose(solve_modes(body).decay.material, 0.5 * 0.5 * 0.02 * TWO_PI * 100.0, rtol=1e-12)
+    np.testing.assert_allclose(
+        solve_modes(body).decay.material, 0.5 * 0.5 * 0.02 * TWO_PI * 100.0, rtol=1e-12
+    )
 
 
 def test_heavy_damping_is_kept_as_it_is(make):

@@ -13,6 +13,7 @@ import scipy.linalg
 import scipy.sparse as sp
 
 from resonate.errors import ModesError
+from resonate.modes import factor as factor_module
 from resonate.modes import solve as solve_module
 from resonate.modes import spectrum as spectrum_module
 from resonate.modes.pencil import check_pencil, split
@@ -283,3 +284,17 @@ def test_shapes_must_fit(make):
         solve_modes(make.Body(stiffness, make.chain(9)[1]))
     with pytest.raises(ModesError, match="basis of shape"):
         solve_modes(make.Body(stiffness, mass, basis=sp.csr_matrix(np.ones((12, 9)))))
+
+
+def test_the_optional_factorisation_gives_the_same_modes_and_counts(make, monkeypatch):
+    pytest.importorskip("rslab")
+    body, known = net(make, most=40)
+    plain = solve_modes(body)
+    monkeypatch.setattr(factor_module, "FAST_FROM", 0)
+    monkeypatch.setattr(factor_module, "_superlu", None)  # must not be used
+
+    fast = solve_modes(body)
+
+    np.testing.assert_allclose(fast.omega, plain.omega, rtol=1e-11)
+    pencil = check_pencil(body.stiffness, body.mass, where="net")
+    assert count_below(pencil, 0.5 * (known[6] + known[7])) == 7
