@@ -76,7 +76,7 @@ class DipoleLine:
         rays = samples.rays(place_m)
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
         spread = samples.air.density_kg_m3 / (4.0 * np.pi) * self.volume_m3 * rays / distance[:, None] ** 2
-        heard = np.empty(samples.heard, dtype=np.complex128)
+        heard = np.empty(samples.count, dtype=np.complex128)
         for part in samples.chunks():
             wavenumber = samples.wavenumber_1_m[part, None]
             push = np.einsum("hni,ni->hn", samples.motion[part], spread)

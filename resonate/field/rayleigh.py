@@ -80,7 +80,7 @@ class BaffledFace:
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
         side = 1.0 if float(self.area_m2 @ np.einsum("ni,ni->n", rays, self.normals)) >= 0.0 else -1.0
         spread = side * samples.air.density_kg_m3 / (2.0 * np.pi) * self.area_m2 / distance
-        heard = np.empty(samples.heard, dtype=np.complex128)
+        heard = np.empty(samples.count, dtype=np.complex128)
         for part in samples.chunks():
             flow = np.einsum("hni,ni->hn", samples.motion[part], self.normals) * spread
             phase = samples.wavenumber_1_m[part, None] * (reference_m - distance)

@@ -33,7 +33,9 @@ def frozen(values: Array) -> Array:
 
 @dataclass(frozen=True, slots=True)
 class Samples:
-    """Radiating samples of one body and how its heard modes move them.
+    """Radiating samples of one body and how its sounding modes move them.
+
+    Modes above the heard band and swings of the whole body do not sound.
 
     Parameters
     ----------
@@ -42,11 +44,13 @@ class Samples:
     points_m : Array
         (n, 3) samples in the body frame.
     motion : Array
-        (h, n, 3) displacement of the samples in each heard mode, kg**-0.5.
+        (h, n, 3) displacement of the samples in each sounding mode, kg**-0.5.
     wavenumber_1_m : Array
-        (h,) wavenumber in air of each heard mode.
+        (h,) wavenumber in air of each sounding mode.
     modes : int
-        Number of modes m of the body, heard or not.
+        Number of modes m of the body, sounding or not.
+    first : int
+        The first that sounds.
     near_m : float
         A microphone closer to a sample than this cannot be served.
     air : Air
@@ -58,6 +62,7 @@ class Samples:
     motion: Array
     wavenumber_1_m: Array
     modes: int
+    first: int
     near_m: float
     air: Air
 
@@ -67,7 +72,7 @@ class Samples:
             object.__setattr__(self, name, frozen(getattr(self, name)))
 
     @property
-    def heard(self) -> int:
+    def count(self) -> int:
         """Number of modes that sound, h."""
         return len(self.wavenumber_1_m)
 
@@ -88,37 +93,38 @@ class Samples:
         nearest = float(np.sqrt(np.min(np.einsum("ni,ni->n", rays, rays))))
         if not nearest >= self.near_m:
             raise BodyError(
-                what=f"a microphone {nearest:.4g} m from the body; the model holds from {self.near_m:.4g} m on",
+                what=f"a microphone {nearest:.4g} m from the body, closer than {self.near_m:.4g} m",
                 where=f"body {self.body!r}",
                 fix=f"move the microphone at least {self.near_m:.2g} m away from the body",
             )
         return rays
 
     def chunks(self) -> Iterator[slice]:
-        """Slices of the heard modes, small enough that modes times samples stay bounded."""
+        """Slices of the sounding modes, small enough that modes times samples stay bounded."""
         step = max(1, CHUNK // max(1, len(self.points_m)))
-        for begin in range(0, self.heard, step):
-            yield slice(begin, min(begin + step, self.heard))
+        for begin in range(0, self.count, step):
+            yield slice(begin, min(begin + step, self.count))
 
     def padded(self, weights: NDArray[np.complex128]) -> NDArray[np.complex128]:
-        """Weights of the heard modes (h,) with zeros for the silent ones (m,)."""
+        """Weights of the sounding modes (h,) with zeros for the silent ones (m,)."""
         full = np.zeros(self.modes, dtype=np.complex128)
-        full[: self.heard] = weights
+        full[self.first : self.first + self.count] = weights
         return full
 
 
 def samples_of(body: Body, modes: ModeSet, air: Air) -> Samples:
-    """Sample a body's radiator and the motion of its heard modes."""
+    """Sample a body's radiator and the motion of its sounding modes."""
     radiator = body.radiator
-    shape = modes.shape[:, : modes.heard]
-    moved = np.asarray(body.probe(radiator.points_m) @ shape)
-    motion = moved.reshape(len(radiator.points_m), 3, modes.heard).transpose(2, 0, 1)
+    sounding = slice(modes.swing, max(modes.heard, modes.swing))
+    moved = np.asarray(body.probe(radiator.points_m) @ modes.shape[:, sounding])
+    motion = moved.reshape(len(radiator.points_m), 3, -1).transpose(2, 0, 1)
     return Samples(
         body=body.name,
         points_m=radiator.points_m,
         motion=motion,
-        wavenumber_1_m=modes.omega[: modes.heard] / air.speed_m_s,
+        wavenumber_1_m=modes.omega[sounding] / air.speed_m_s,
         modes=modes.count,
+        first=modes.swing,
         near_m=_near_m(body),
         air=air,
     )

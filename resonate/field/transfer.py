@@ -101,6 +101,6 @@ def _line_warnings(body: Body, modes: ModeSet, air: Air) -> tuple[str, ...]:
     if count == 0:
         return ()
     return (
-        f"body {body.name!r}: {count} of its {modes.heard} heard modes lie above {limit_hz:.0f} Hz, where its "
-        "cross-section is not small against the wavelength; compact dipoles make them too loud",
+        f"body {body.name!r}: {count} of its {modes.heard} heard modes lie above {limit_hz:.0f} Hz, where "
+        "its cross-section is not small against the wavelength; compact dipoles make them too loud",
     )

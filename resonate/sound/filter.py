@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -26,6 +27,8 @@ PASS_HZ = 20_000.0
 # Widest share of the delivery rate that passes, and how much room the flank takes above it.
 PASS_SHARE = 5.0 / 12.0
 FLANK = 1.4
+# Relative error of the quadrature over a cell.
+QUADRATURE = 1e-14
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,7 +74,7 @@ class BandLimit:
         return np.where(inside >= 0.0, cut * np.sinc(cut * offset_s) * window, 0.0)
 
     def slope(self, offset_s: Array) -> Array:
-        """Derivative of the kernel, 1/s^2, at any offsets."""
+        """Evaluate the derivative of the kernel, 1/s^2, at any offsets."""
         from scipy.special import i0, i1  # noqa: PLC0415 (heavy)
 
         cut = self.pass_hz + self.stop_hz
@@ -99,7 +102,9 @@ class BandLimit:
         ComplexArray
             (m,) complex gains; 1 within 1e-10 in the pass band for slow decays.
         """
-        nodes, weights = _rule(self)
+        top_hz = float(np.max(np.abs(exponent.imag), initial=0.0)) / (2.0 * np.pi)
+        # Kernel and mode together turn at most twice in a panel; 16 points carry that to 1e-19.
+        nodes, weights = _panels(self.half_s, int(np.ceil(0.5 * self.half_s * (self.stop_hz + top_hz))))
         values = weights * self.kernel(nodes)
         gains = np.empty(len(exponent), dtype=np.complex128)
         for begin in range(0, len(exponent), 256):
@@ -126,9 +131,16 @@ def band_limit(rate_hz: float, *, heard_hz: float) -> BandLimit:
     return BandLimit(pass_hz, min(rate_hz - pass_hz, FLANK * pass_hz))
 
 
-def deliver(
-    limit: BandLimit, values: Array, *, nodes_s: Array, rate_hz: float, first_s: float, count: int
-) -> Array:
+@dataclass(frozen=True, slots=True)
+class Grid:
+    """Uniform delivery times: ``first_s + n / rate_hz`` for n below ``count``."""
+
+    first_s: float
+    rate_hz: float
+    count: int
+
+
+def deliver(limit: BandLimit, values: Array, *, nodes_s: Array, grid: Grid) -> Array:
     """Sum kernels at uniform delivery times: ``out[n] = sum_k g(first + n / rate - node_k) values[k]``.
 
     Parameters
@@ -139,8 +151,8 @@ def deliver(
         (k, c) quadrature weight times signal at the nodes.
     nodes_s : Array
         (k,) ascending times of the nodes, s.
-    rate_hz, first_s, count : float, float, int
-        Delivery rate, time of the first sample and number of samples.
+    grid : Grid
+        Delivery times.
 
     Returns
     -------
@@ -152,16 +164,16 @@ def deliver(
     All samples see a node at the same fraction of a sample, so one table row (all taps at that
     fraction, cubic Hermite between tabulated fractions, 1e-12 of the peak) serves them all.
     """
-    table = _table(limit, float(rate_hz))
-    reach = table.reach
-    place = (nodes_s - first_s) * rate_hz
+    table = _table(limit, grid.rate_hz)
+    reach, count = table.reach, grid.count
+    place = (nodes_s - grid.first_s) * grid.rate_hz
     use = (place > -reach - 1) & (place < count + reach)
     place, values = place[use], values[use]
     base = np.floor(place).astype(np.int64)
     rows = _rows(table, place - base)
     out = np.zeros((count + 4 * reach + 4, values.shape[1]))
     edges = np.concatenate(([0], np.flatnonzero(np.diff(base)) + 1, [len(base)]))
-    for begin, end in zip(edges[:-1], edges[1:], strict=True):
+    for begin, end in pairwise(edges):
         if end > begin:
             start = int(base[begin]) + reach + 1
             out[start : start + rows.shape[1]] += rows[begin:end].T @ values[begin:end]
@@ -211,11 +223,12 @@ def cell_rule(width_s: float, top_hz: float) -> tuple[Array, Array]:
     tuple[Array, Array]
         Nodes, s, and weights, s.
     """
-    angle = 2.0 * np.pi * top_hz * width_s
-    points, error = 1, angle**2 / 24.0
-    while error > 1e-14:
+    square = (2.0 * np.pi * top_hz * width_s) ** 2
+    points, error = 1, square / 24.0
+    while error > QUADRATURE:
         points += 1
-        error *= angle**2 * points**4 * (2 * points - 1) / ((2 * points + 1) * (2 * points * (2 * points - 1)) ** 3)
+        even, odd = 2 * points, 2 * points - 1
+        error *= square * points**4 * odd / ((even + 1) * (even * odd) ** 3)
     nodes, weights = _legendre(points)
     return 0.5 * width_s * (nodes + 1.0), 0.5 * width_s * weights
 
@@ -226,13 +239,10 @@ def _legendre(points: int) -> tuple[Array, Array]:
     return nodes, weights
 
 
-@lru_cache(maxsize=8)
-def _rule(limit: BandLimit) -> tuple[Array, Array]:
-    # Gauss-Legendre panels over one half: kernel and mode together turn at most
-    # 2 * stop_hz times a second; 16 points carry two turns to full precision.
-    panels = int(np.ceil(limit.half_s * limit.stop_hz))
-    nodes, weights = np.polynomial.legendre.leggauss(16)
-    width = limit.half_s / panels
+def _panels(length_s: float, panels: int) -> tuple[Array, Array]:
+    # Gauss-Legendre nodes and weights on [0, length], 16 a panel.
+    nodes, weights = _legendre(16)
+    width = length_s / panels
     begins = width * np.arange(panels)
     every = (begins[:, None] + 0.5 * width * (nodes + 1.0)).ravel()
     return every, np.tile(0.5 * width * weights, panels)

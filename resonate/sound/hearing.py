@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -59,7 +60,7 @@ class Hearing:
         times = self._emitted(np.arange(begin, end), clock)
         cells = np.clip(np.searchsorted(self.knots_s, times, side="right") - 1, 0, len(self.knots_s) - 2)
         edges = np.concatenate(([0], np.flatnonzero(np.diff(cells)) + 1, [len(cells)]))
-        for first, last in zip(edges[:-1], edges[1:], strict=True):
+        for first, last in pairwise(edges):
             if last > first:
                 lower = int(cells[first])
                 yield begin + int(first), begin + int(last), lower, lower + 1
@@ -99,34 +100,46 @@ def hearings(
     common_m = 0.0 if scene.sound.delay or not distances else min(float(np.min(each)) for each in distances)
     return tuple(
         tuple(
-            _hearing(track, transfer, place, (float(distance) - common_m) / speed_m_s, speed_m_s, scene.clock)
+            _hearing(
+                track,
+                transfer,
+                _Path(place, (float(distance) - common_m) / speed_m_s, speed_m_s),
+                scene.clock,
+            )
             for place, distance in zip(places, of_body, strict=True)
         )
         for track, transfer, of_body in zip(tracks, transfers, distances, strict=True)
     )
 
 
-def _hearing(
-    track: BodyTrack, transfer: Transfer, mic_m: Array, shift_s: float, speed_m_s: float, clock: Clock
-) -> Hearing:
+@dataclass(frozen=True, slots=True)
+class _Path:
+    # To a microphone in the world, how long sound takes, and how fast it is.
+    mic_m: Array
+    shift_s: float
+    speed_m_s: float
+
+
+def _hearing(track: BodyTrack, transfer: Transfer, path: _Path, clock: Clock) -> Hearing:
+    looks = np.zeros(1)
     if track.free:
-        span_s = clock.end_s - clock.begin_s
-        looks = np.linspace(clock.begin_s, clock.end_s, 2 + int(span_s / LOOK_S)) - shift_s
-    else:
-        looks = np.zeros(1)
-    seen = _seen(track, mic_m, looks)
+        # Nothing is known, and nothing sounds, before the run.
+        first_s = max(clock.begin_s - path.shift_s, clock.run_begin_s)
+        last_s = max(clock.end_s - path.shift_s, first_s)
+        looks = np.linspace(first_s, last_s, 2 + int((last_s - first_s) / LOOK_S))
+    seen = _seen(track, path.mic_m, looks)
+    centre_m = np.asarray(track.inertia.centre_m)
     chosen = np.zeros(1, dtype=np.int64)
     if len(looks) > 1 and track.modes.heard:
-        sharp = track.modes.omega[track.modes.heard - 1] / speed_m_s * transfer.radius_m
-        chosen = _knots(seen - np.asarray(track.inertia.centre_m), sharp)
-    centre_m = np.asarray(track.inertia.centre_m)
+        sharp = track.modes.omega[track.modes.heard - 1] / path.speed_m_s * transfer.radius_m
+        chosen = _knots(seen - centre_m, sharp)
 
     @lru_cache(maxsize=4)
     def weights(knot: int) -> ComplexArray:
         place = seen[chosen[knot]]
         return transfer.weights(place, float(np.linalg.norm(place - centre_m)))
 
-    return Hearing(Fraction(shift_s), looks[chosen], weights)
+    return Hearing(Fraction(path.shift_s), looks[chosen], weights)
 
 
 def _seen(track: BodyTrack, mic_m: Array, times_s: Array) -> Array:

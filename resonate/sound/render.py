@@ -10,10 +10,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from resonate.errors import ResonateError
-from resonate.sound.filter import BandLimit, band_limit, deliver
+from resonate.sound.filter import BandLimit, Grid, band_limit, deliver
 from resonate.sound.hearing import Hearing, hearings
 from resonate.sound.ring import exponents, ring
-from resonate.sound.timeline import Stretch, batches, ended, nodes_of, stretches
+from resonate.sound.timeline import Stretch, batches, ended, nodes_of, only, stretches
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Sequence
@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.field.transfer import Transfer
-    from resonate.run.record import BodyTrack, Record
+    from resonate.run.record import BodyTrack, Record, Segment
     from resonate.scene.clock import Clock
     from resonate.scene.model import Scene
 
@@ -103,7 +103,7 @@ def render(record: Record, transfers: Sequence[Transfer], scene: Scene) -> Sound
     with threadpool_limits(1):
         pairs = hearings(record.bodies, transfers, scene)
         for track, of_body in zip(record.bodies, pairs, strict=True):
-            if track.modes.heard == 0 or not any(np.any(segment.z) for segment in track.segments):
+            if track.modes.heard <= track.modes.swing or not _moves(track):
                 continue
             voice = _Voice.of(track, limit, clock)
             for channel, heard in enumerate(of_body):
@@ -111,51 +111,61 @@ def render(record: Record, transfers: Sequence[Transfer], scene: Scene) -> Sound
     return Sound(pressure, clock.sample_rate, tuple(mic.name for mic in scene.mics))
 
 
+def _moves(track: BodyTrack) -> bool:
+    return any(segment.is_contact or np.any(segment.z) for segment in track.segments)
+
+
 @dataclass(frozen=True, slots=True)
 class _Voice:
-    # One body, ready to be rendered at any microphone. Vectors run over its heard modes.
-    track: BodyTrack
+    # One body, ready to be rendered at any microphone. Vectors run over its sounding modes.
+    sounding: slice
+    segments: tuple[Segment, ...]
     limit: BandLimit
     clock: Clock
+    omega: Array
+    decay: Array
     exponent: ComplexArray
     speed: ComplexArray
     gain: ComplexArray
     stretches: tuple[Stretch, ...]
-    top_hz: float
 
     @classmethod
     def of(cls, track: BodyTrack, limit: BandLimit, clock: Clock) -> _Voice:
-        omega = track.modes.omega[: track.modes.heard]
-        exponent = exponents(omega, track.modes.decay.total[: track.modes.heard])
+        sounding = slice(track.modes.swing, track.modes.heard)
+        omega, decay = track.modes.omega[sounding], track.modes.decay.total[sounding]
+        exponent = exponents(omega, decay)
         return cls(
-            track=track,
+            sounding=sounding,
+            segments=only(track.segments, sounding),
             limit=limit,
             clock=clock,
+            omega=omega,
+            decay=decay,
             exponent=exponent,
             # q' = Re[(1 + j a / wd) z], hence q'' = Re[(1 + j a / wd) z'].
-            speed=1.0 - 1j * exponent.real / exponent.imag,
+            speed=np.asarray(1.0 - 1j * exponent.real / exponent.imag, dtype=np.complex128),
             gain=limit.gain(exponent),
             stretches=stretches(track.segments, limit.half_s),
-            top_hz=float(limit.stop_hz + np.max(omega) / (2.0 * np.pi)),
         )
 
     def add_to(self, out: Array, heard: Hearing) -> None:
         # In order of time, so that the loudest sample so far bounds what a ring may leave out.
         peak = 0.0
-        for stretch in self.stretches:
-            for begin, end in self._blocks(stretch, heard):
-                for first, last, lower, upper in heard.spans(begin, end, self.clock):
-                    columns = heard.columns(lower, upper)[: len(self.exponent)] * self.speed[:, None]
-                    part = self._signal(stretch, columns, first=first, count=last - first, heard=heard, peak=peak)
-                    mixed = heard.mix(part, lower=lower, first=first, clock=self.clock)
-                    out[first:last] += mixed
-                    peak = max(peak, float(np.max(np.abs(mixed), initial=0.0)))
+        for stretch, begin, end in self._blocks(heard):
+            for first, last, lower, upper in heard.spans(begin, end, self.clock):
+                columns = heard.columns(lower, upper)[self.sounding] * self.speed[:, None]
+                signal = self._window if stretch.window else self._ringing
+                part = signal(stretch, columns, _Samples(first, last - first, heard.shift), peak)
+                mixed = heard.mix(part, lower=lower, first=first, clock=self.clock)
+                out[first:last] += mixed
+                peak = max(peak, float(np.max(np.abs(mixed), initial=0.0)))
 
-    def _blocks(self, stretch: Stretch, heard: Hearing) -> Iterator[tuple[int, int]]:
-        begin = self._sample(stretch.begin_s, heard)
-        end = self._sample(stretch.end_s, heard)
-        for first in range(begin, end, BLOCK):
-            yield first, min(first + BLOCK, end)
+    def _blocks(self, heard: Hearing) -> Iterator[tuple[Stretch, int, int]]:
+        for stretch in self.stretches:
+            begin = self._sample(stretch.begin_s, heard)
+            end = self._sample(stretch.end_s, heard)
+            for first in range(begin, end, BLOCK):
+                yield stretch, first, min(first + BLOCK, end)
 
     def _sample(self, time_s: float, heard: Hearing) -> int:
         # First sample emitted at or after a time; exact, so that every sample has one stretch.
@@ -164,43 +174,48 @@ class _Voice:
         place = (Fraction(time_s) + heard.shift - self.clock.begin) * self.clock.sample_rate
         return min(max(ceil(place), 0), self.clock.sample_count)
 
-    def _since(self, sample: int, heard: Hearing, origin_s: float) -> float:
-        # Emission time of a sample counted from an origin, rounded once.
-        return float(self.clock.sample_time(sample) - heard.shift - Fraction(origin_s))
+    def _since(self, samples: _Samples, origin_s: float) -> float:
+        # Emission time of the first sample counted from an origin, rounded once.
+        return float(self.clock.sample_time(samples.first) - samples.shift - Fraction(origin_s))
 
-    def _signal(
-        self, stretch: Stretch, columns: ComplexArray, *, first: int, count: int, heard: Hearing, peak: float
-    ) -> Array:
-        # (count, c) filtered signal for constant columns (m, c).
-        segments = self.track.segments
-        if not stretch.window:
-            at_end = stretch.first == len(segments)
-            segment = ended(segments[-1], self.exponent) if at_end else segments[stretch.first]
-            since = self._since(first, heard, segment.begin_s)
-            state = segment.z[: len(self.exponent)] * np.exp(self.exponent * since)
-            return ring(
-                self.exponent * state,
-                columns * self.gain[:, None],
-                omega=self.track.modes.omega[: len(self.exponent)],
-                decay=self.track.modes.decay.total[: len(self.exponent)],
-                rate_hz=float(self.clock.sample_rate),
-                count=count,
-                tolerance=TOLERANCE,
-                peak=np.full(columns.shape[1], peak) if peak > 0.0 else None,
-            )
-        origin_s = segments[stretch.first].begin_s
-        since = self._since(first, heard, origin_s)
-        rate_hz = float(self.clock.sample_rate)
-        half_s = self.limit.half_s
+    def _ringing(self, stretch: Stretch, columns: ComplexArray, samples: _Samples, peak: float) -> Array:
+        # (count, c) filtered ringing for constant columns (m, c).
+        at_end = stretch.first == len(self.segments)
+        segment = ended(self.segments[-1], self.exponent) if at_end else self.segments[stretch.first]
+        state = segment.z * np.exp(self.exponent * self._since(samples, segment.begin_s))
+        return ring(
+            self.exponent * state,
+            columns * self.gain[:, None],
+            omega=self.omega,
+            decay=self.decay,
+            rate_hz=float(self.clock.sample_rate),
+            count=samples.count,
+            tolerance=TOLERANCE,
+            peak=np.full(columns.shape[1], peak) if peak > 0.0 else None,
+        )
+
+    def _window(self, stretch: Stretch, columns: ComplexArray, samples: _Samples, _peak: float) -> Array:
+        # The same in a window, where forces act within reach of the kernel.
+        origin_s = self.segments[stretch.first].begin_s
+        since, rate_hz = self._since(samples, origin_s), float(self.clock.sample_rate)
+        half_s, count = self.limit.half_s, samples.count
+        top_hz = float(self.limit.stop_hz + self.omega[-1] / (2.0 * np.pi))
         span = (since - half_s, since + (count - 1) / rate_hz + half_s)
         out = np.zeros((count, columns.shape[1]))
-        for batch in batches(segments, stretch, self.exponent, origin_s=origin_s, span_s=span):
-            nodes, values = nodes_of(batch, columns, self.exponent, top_hz=self.top_hz)
+        for batch in batches(self.segments, stretch, self.exponent, origin_s=origin_s, span_s=span):
+            nodes, values = nodes_of(batch, columns, self.exponent, top_hz=top_hz)
             # The samples that this batch reaches.
             low = max(0, int((nodes[0] - half_s - since) * rate_hz) - 1)
             high = min(count, int((nodes[-1] + half_s - since) * rate_hz) + 2)
             if high > low:
-                out[low:high] += deliver(
-                    self.limit, values, nodes_s=nodes, rate_hz=rate_hz, first_s=since + low / rate_hz, count=high - low
-                )
+                grid = Grid(first_s=since + low / rate_hz, rate_hz=rate_hz, count=high - low)
+                out[low:high] += deliver(self.limit, values, nodes_s=nodes, grid=grid)
         return out
+
+
+@dataclass(frozen=True, slots=True)
+class _Samples:
+    # A run of delivery samples, and how much later than emitted they arrive.
+    first: int
+    count: int
+    shift: Fraction

@@ -89,7 +89,12 @@ def ring(
     near = int(min(NEAR, max(1, 2 ** round(np.log2(max(count, 1)) / 2.0))))
     order = _last_to_die(amplitudes, decay)
     blocks = _ring(
-        amplitudes[order].T.copy(), rates[order] / rate_hz, near=near, count=count, tolerance=tolerance, peak=peak
+        amplitudes[order].T.copy(),
+        rates[order] / rate_hz,
+        near=near,
+        count=count,
+        tolerance=tolerance,
+        peak=peak,
     )
     return np.ascontiguousarray(blocks.reshape(len(blocks), -1)[:, :count].T)
 
@@ -181,6 +186,7 @@ def _rows(step: ComplexArray, near: int) -> Array:
 
 def _living(now: ComplexArray, allowed: Array) -> int:
     # How many leading modes must stay so that the rest sums to at most what each channel allows.
-    rest = np.cumsum(np.abs(now[:, ::-1]), axis=1)
-    dropped = min((int(np.searchsorted(sums, most, side="right")) for sums, most in zip(rest, allowed, strict=True)), default=0)
-    return now.shape[1] - dropped
+    alive = 0
+    for rest, most in zip(np.cumsum(np.abs(now[:, ::-1]), axis=1), allowed, strict=True):
+        alive = max(alive, len(rest) - int(np.searchsorted(rest, most, side="right")))
+    return alive

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -64,18 +64,32 @@ def stretches(segments: Sequence[Segment], half_s: float) -> tuple[Stretch, ...]
 
 @dataclass(frozen=True, slots=True)
 class Batch:
-    """Cells of equal width: ``drive`` (n, m) is z' just after each cell begins.
+    """Cells of equal width, one after the other from ``begin_s``.
 
-    Inside a cell z' is ``drive * exp(lambda u)``: the force is constant there.
+    ``drive`` (n, m) is z' just after each cell begins; inside a cell z' is ``drive * exp(lambda u)``, as
+    the force is constant there.
     """
 
-    begin_s: Array
+    begin_s: float
     width_s: float
     drive: ComplexArray
 
 
+def only(segments: Sequence[Segment], modes: slice) -> tuple[Segment, ...]:
+    """Leave some of the modes in every segment."""
+    return tuple(
+        replace(segment, z=segment.z[modes], rows=None if segment.rows is None else segment.rows[:, modes])
+        for segment in segments
+    )
+
+
 def batches(
-    segments: Sequence[Segment], stretch: Stretch, exponent: ComplexArray, *, origin_s: float, span_s: tuple[float, float]
+    segments: Sequence[Segment],
+    stretch: Stretch,
+    exponent: ComplexArray,
+    *,
+    origin_s: float,
+    span_s: tuple[float, float],
 ) -> Iterator[Batch]:
     """Cover part of a window with cells.
 
@@ -86,7 +100,7 @@ def batches(
     stretch : Stretch
         The window.
     exponent : ComplexArray
-        (m,) exponents of the modes wanted, the first of the body.
+        (m,) exponents of the segments' modes.
     origin_s : float
         Times are counted from here (precise late in a take).
     span_s : tuple[float, float]
@@ -116,11 +130,9 @@ def batches(
 
 def ended(segment: Segment, exponent: ComplexArray) -> Segment:
     """Free segment that follows a contact segment nothing was recorded after."""
-    from dataclasses import replace  # noqa: PLC0415
-
-    state = segment.z[: len(exponent)]
-    for _, state in _steps(segment, exponent):  # noqa: B007
-        pass
+    state = segment.z
+    for _, after in _steps(segment, exponent):
+        state = after
     return replace(segment, begin_s=segment.end_s, z=state, force_n=None, rows=None, contacts=())
 
 
@@ -131,11 +143,11 @@ def _free(
         return
     cells = int(np.ceil((end - begin) / CELL_S))
     width = (end - begin) / cells
-    now = exponent * segment.z[: len(exponent)] * np.exp(exponent * (begin - (segment.begin_s - origin_s)))
+    now = exponent * segment.z * np.exp(exponent * (begin - (segment.begin_s - origin_s)))
     for first in range(0, cells, BATCH):
         count = min(BATCH, cells - first)
         drive = now * powers(np.exp(exponent * width), count + 1)
-        yield Batch(begin + width * np.arange(first, first + count), width, drive[:count])
+        yield Batch(begin + width * first, width, drive[:count])
         now = drive[count]
 
 
@@ -153,27 +165,28 @@ def _contact(
             first = step
         drive.append(rate)
         if len(drive) == BATCH:
-            yield Batch(start + width * np.arange(first, first + BATCH), width, np.array(drive))
+            yield Batch(start + width * first, width, np.array(drive))
             drive = []
     if drive:
-        yield Batch(start + width * np.arange(first, first + len(drive)), width, np.array(drive))
+        yield Batch(start + width * first, width, np.array(drive))
 
 
 def _steps(segment: Segment, exponent: ComplexArray) -> Iterator[tuple[ComplexArray, ComplexArray]]:
     # Per step: z' just after it begins, and z at its end (exact for a constant force).
-    assert segment.force_n is not None
-    assert segment.rows is not None
-    modes = len(exponent)
-    state = segment.z[:modes]
+    state = segment.z
     grown = np.expm1(exponent * segment.step_s) / exponent
-    push = segment.force_n.T @ segment.rows[:, :modes]
+    if segment.force_n is None or segment.rows is None:
+        return
+    push = segment.force_n.T @ segment.rows
     for force in push:
         rate = exponent * state + force
         state = state + grown * rate
         yield rate, state
 
 
-def nodes_of(batch: Batch, columns: ComplexArray, exponent: ComplexArray, *, top_hz: float) -> tuple[Array, Array]:
+def nodes_of(
+    batch: Batch, columns: ComplexArray, exponent: ComplexArray, *, top_hz: float
+) -> tuple[Array, Array]:
     """Signal of some channels at the quadrature nodes of a batch.
 
     Parameters
@@ -197,5 +210,5 @@ def nodes_of(batch: Batch, columns: ComplexArray, exponent: ComplexArray, *, top
     flat = spread.reshape(len(exponent), -1)
     # Real part of a complex product, as one real product.
     values = np.hstack((batch.drive.real, batch.drive.imag)) @ np.vstack((flat.real, -flat.imag))
-    times = batch.begin_s[:, None] + inside
-    return times.ravel(), values.reshape(len(batch.begin_s) * len(inside), columns.shape[1])
+    times = batch.begin_s + batch.width_s * np.arange(len(batch.drive))[:, None] + inside
+    return times.ravel(), values.reshape(times.size, columns.shape[1])

@@ -16,7 +16,7 @@ from resonate.modes.modeset import Decay, ModeSet
 AIR = Air(speed_m_s=343.2, density_kg_m3=1.204)
 
 
-def modes_at(wavenumber_1_m, shape, *, heard=None):
+def modes_at(wavenumber_1_m, shape, *, heard=None, swing=0):
     omega = np.atleast_1d(np.asarray(wavenumber_1_m, dtype=float)) * AIR.speed_m_s
     none = np.zeros_like(omega)
     return ModeSet(
@@ -28,6 +28,7 @@ def modes_at(wavenumber_1_m, shape, *, heard=None):
         decay=Decay(material=none, thermoelastic=none, support=none, radiation=none),
         residual=none,
         heard=len(omega) if heard is None else heard,
+        swing=swing,
         heard_hz=20e3,
         solved_hz=80e3,
     )
@@ -67,9 +68,11 @@ def face(points, areas, motion, wavenumber_1_m, **how):
     normals = np.tile([0.0, 1.0, 0.0], (len(points), 1))
     weights = np.zeros((len(points), 3))
     weights[:, 0] = areas
-    heard = how.pop("heard", None)
+    heard, swing = how.pop("heard", None), how.pop("swing", 0)
     return transfer_for(
-        body_of("baffled", points, normals, weights, **how), modes_at(wavenumber_1_m, shape, heard=heard), AIR
+        body_of("baffled", points, normals, weights, **how),
+        modes_at(wavenumber_1_m, shape, heard=heard, swing=swing),
+        AIR,
     )
 
 

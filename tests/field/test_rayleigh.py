@@ -129,7 +129,9 @@ def test_a_face_that_moves_outward_pushes(air_model):
     # Near a large face the pressure is rho c u in phase with the velocity; below that, mass-like:
     # in phase with the acceleration (Kinsler & Frey, section 7.5).
     points, areas = air_model.disc(0.1, 60)
-    weight = air_model.face(points, areas, np.ones(len(points)), 0.5).weights(np.array([0.0, 0.05, 0.0]), 0.05)[0]
+    weight = air_model.face(points, areas, np.ones(len(points)), 0.5).weights(
+        np.array([0.0, 0.05, 0.0]), 0.05
+    )[0]
     assert weight.real > 0.0
     assert abs(weight.imag) < 0.2 * weight.real
 
@@ -142,6 +144,16 @@ def test_only_heard_modes_sound(air_model):
     assert weights.shape == (3,)
     assert weights[2] == 0.0
     assert np.all(weights[:2] != 0.0)
+
+
+def test_swings_of_the_whole_body_are_silent(air_model):
+    points, areas = air_model.disc(0.1, 20)
+    motion = np.ones((len(points), 3))
+    place = np.array([0.0, 1.0, 0.0])
+    weights = air_model.face(points, areas, motion, [1.0, 2.0, 3.0], swing=1).weights(place, 1.0)
+    every = air_model.face(points, areas, motion, [1.0, 2.0, 3.0]).weights(place, 1.0)
+    assert weights[0] == 0.0
+    np.testing.assert_array_equal(weights[1:], every[1:])
 
 
 def test_chunks_do_not_change_the_sum(air_model, monkeypatch):
