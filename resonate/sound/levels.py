@@ -27,6 +27,9 @@ RELATIVE_GATE_LU = -10.0
 OFFSET_LU = -0.691
 # Samples filtered at once.
 BLOCK = 1 << 17
+# Samples on each side that interpolation between two samples takes in, and pieces it is done in.
+HALF_TAPS = 32
+PIECE = 64
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,29 +124,22 @@ def true_peak(samples: Array) -> float:
     ITU-R BS.1770-5, Annex 2 (the four-fold filter there reads up to 0.3 dB off near a quarter of the rate).
     """
     largest = largest_of(samples)
-    half = 32
-    taps = _interpolator(half)
+    taps = _interpolator(HALF_TAPS)
+    # An interpolated value is at most this many times its loudest neighbour: quiet places are skipped.
+    reach = float(np.max(np.sum(np.abs(taps), axis=1)))
     for channel in np.asarray(samples).T:
-        padded = np.concatenate((np.zeros(half), channel, np.zeros(half)))
-        for begin in range(0, len(channel), BLOCK):
-            part = padded[begin : begin + BLOCK + 2 * half]
-            # A loud neighbourhood is needed for a loud value between samples.
-            views = np.lib.stride_tricks.sliding_window_view(part, 2 * half)
-            largest = max(largest, _between(views, taps, largest))
+        blocks = -(-len(channel) // PIECE)
+        padded = np.zeros((blocks + 2) * PIECE)
+        padded[PIECE : PIECE + len(channel)] = channel
+        loud = np.max(np.abs(padded.reshape(-1, PIECE)), axis=1)
+        local = np.maximum(np.maximum(loud[:-2], loud[1:-1]), loud[2:])
+        windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * HALF_TAPS)
+        for block in np.argsort(-local, kind="stable"):
+            if local[block] * reach <= largest:
+                break
+            begin = (block + 1) * PIECE - HALF_TAPS
+            largest = max(largest, largest_of(windows[begin : begin + PIECE + 1] @ taps.T))
     return largest
-
-
-def _between(views: Array, taps: Array, floor: float) -> float:
-    # The interpolator adds at most sum |taps| times the local maximum: quieter places are skipped.
-    reach = np.max(np.sum(np.abs(taps), axis=1))
-    blocks = 64
-    best = 0.0
-    for begin in range(0, len(views), blocks):
-        part = views[begin : begin + blocks]
-        local = max(float(np.max(np.abs(part[0]))), float(np.max(np.abs(part[-1]))))
-        if local * reach > max(best, floor):
-            best = max(best, float(np.max(np.abs(part @ taps.T))))
-    return best
 
 
 def _interpolator(half: int) -> Array:
