@@ -188,9 +188,10 @@ def _check(found: _Found, pencil: Pencil, *, free: bool, where: str) -> None:
     unavoidable = rounding(pencil, found.vector[:, doubtful]) / found.value[doubtful]
     allowed = np.clip(10.0 * unavoidable, RESIDUAL, RESIDUAL_MOST)
     for number, limit in zip(doubtful, allowed, strict=True):
-        if not found.residual[number] <= limit:
+        size = found.residual[number]
+        if not size <= limit:
             raise ModesError(
-                what=f"mode {number + 1} has a residual of {found.residual[number]:.2g}; {limit:.1g} is allowed",
+                what=f"mode {number + 1} has a residual of {size:.2g}; {limit:.1g} would do",
                 where=where,
                 fix="sizes or moduli differ too much within the body: use fewer or better shaped elements",
             )

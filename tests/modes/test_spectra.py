@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+import scipy.linalg
 import scipy.optimize
 import scipy.sparse as sp
 from scipy.sparse.linalg import LaplacianNd
@@ -77,6 +78,33 @@ def test_mikota_pencil_has_the_natural_numbers(make, size):
     modes = solve_modes(make.Body(sp.csr_matrix(stiffness), sp.csr_matrix(mass)))
 
     np.testing.assert_allclose(modes.omega, np.arange(1, modes.count + 1), rtol=1e-9)
+
+
+@pytest.mark.parametrize(("size", "seed"), [(150, 1), (1300, 2), (1300, 3)])
+def test_irregular_nets_agree_with_lapack(make, size, seed):
+    # Springs of very different strength between random neighbours, and a mass that couples freedoms:
+    # the dense generalised solver of LAPACK is the reference.
+    generator = np.random.default_rng(seed)
+    near = np.clip(np.arange(3 * size) // 3 + generator.integers(-9, 10, 3 * size), 0, size - 1)
+    spring = sp.csr_matrix(
+        (
+            np.r_[np.ones(3 * size), -np.ones(3 * size)],
+            (np.tile(np.arange(3 * size), 2), np.r_[np.arange(3 * size) // 3, near]),
+        ),
+        shape=(3 * size, size),
+    )
+    stiffness = spring.T @ sp.diags(10.0 ** generator.uniform(0, 4, 3 * size)) @ spring + 1e-3 * sp.identity(
+        size
+    )
+    mass = sp.diags([np.full(size - 1, 0.2), np.linspace(1, 3, size), np.full(size - 1, 0.2)], [-1, 0, 1])
+
+    modes = solve_modes(make.Body(sp.csr_matrix(stiffness), sp.csr_matrix(mass), bands=make.Bands(most=80)))
+
+    known = scipy.linalg.eigvalsh(stiffness.toarray(), mass.toarray())
+    # LAPACK errs by rounding of the largest eigenvalue.
+    atol = 1e-14 * known[-1]
+    np.testing.assert_allclose(modes.omega**2, known[: modes.count], rtol=1e-9, atol=atol)
+    np.testing.assert_allclose(modes.shape.T @ mass @ modes.shape, np.eye(modes.count), atol=1e-10)
 
 
 def test_square_net_has_its_pairs_and_both_are_independent(make):
