@@ -42,7 +42,7 @@ def safe_name(title: str) -> str:
     >>> safe_name("Galley: mug / 2"), safe_name("aux"), safe_name("...")
     ('Galley_ mug _ 2', 'aux_take', 'take')
     """
-    text = unicodedata.normalize("NFC", title)
+    text = " ".join(unicodedata.normalize("NFC", title).split())
     text = "".join(c if c.isprintable() else " " for c in _UNSAFE.sub("_", text))
     name = " ".join(text.split()).strip(". ")
     while len(name.encode("utf-8")) > _MOST_NAME_BYTES:
