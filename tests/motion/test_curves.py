@@ -250,3 +250,13 @@ def test_two_runs_give_the_same_bits(kit, track, bar):
     first, second = (make(kit, track, bar)[0].bodies[0] for _ in range(2))
     assert first.key_weights.tobytes() == second.key_weights.tobytes()
     assert first.targets.tobytes() == second.targets.tobytes()
+
+
+def test_a_body_without_modes_still_moves(kit, bar):
+    track = kit.Track(
+        bar.modes([], []), [(0.1, 1e-4, np.full(4, 7.0), [])], free=True, speed_m_s=(0.5, 0.0, 0.0)
+    )
+    body = curves(kit.record(track), [bar], kit.scene(ring="true")).bodies[0]
+    assert body.weights.shape == (48, 0)
+    assert np.max(body.force_peak_n) == 7.0
+    assert body.place_m[-1, 0] > 0.5
