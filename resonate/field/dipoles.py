@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.field.samples import frozen
+from resonate.field.samples import frozen, phasor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -26,6 +26,8 @@ class DipoleLine:
     ----------
     samples : Samples
         Samples along the line.
+    motion : Array
+        (3, h, n) displacement along body x, y and z in each sounding mode, kg**-0.5.
     volume_m3 : Array
         (n, 3) displaced plus added volume of each slice, for motion along body x, y and z.
     warnings : tuple[str, ...]
@@ -40,11 +42,13 @@ class DipoleLine:
     """
 
     samples: Samples
+    motion: Array
     volume_m3: Array
     warnings: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         """Copy and freeze."""
+        object.__setattr__(self, "motion", frozen(self.motion))
         object.__setattr__(self, "volume_m3", frozen(self.volume_m3))
 
     @property
@@ -76,10 +80,15 @@ class DipoleLine:
         rays = samples.rays(place_m)
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
         spread = samples.air.density_kg_m3 / (4.0 * np.pi) * self.volume_m3 * rays / distance[:, None] ** 2
+        decay = np.stack((np.ones_like(distance), 1.0 / distance), axis=1)
         heard = np.empty(samples.count, dtype=np.complex128)
         for part in samples.chunks():
-            wavenumber = samples.wavenumber_1_m[part, None]
-            push = np.einsum("hni,ni->hn", samples.motion[part], spread)
-            phase = np.exp(1j * wavenumber * (reference_m - distance))
-            heard[part] = np.einsum("hn,hn->h", push * (1j * wavenumber + 1.0 / distance), phase)
+            push = self.motion[0, part] * spread[:, 0]
+            push += self.motion[1, part] * spread[:, 1]
+            push += self.motion[2, part] * spread[:, 2]
+            wavenumber = samples.wavenumber_1_m[part]
+            turned = phasor(wavenumber[:, None] * (reference_m - distance))
+            real, imaginary = (push * turned.cosine) @ decay, (push * turned.sine) @ decay
+            far, near = (real + 1j * imaginary).T
+            heard[part] = 1j * wavenumber * far + near
         return samples.padded(heard)

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.field.samples import frozen
+from resonate.field.samples import frozen, phasor
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -26,6 +26,8 @@ class BaffledFace:
     ----------
     samples : Samples
         Samples of the face.
+    motion : Array
+        (h, n) displacement along the normal in each sounding mode, kg**-0.5.
     normals : Array
         (n, 3) unit normals.
     area_m2 : Array
@@ -41,14 +43,15 @@ class BaffledFace:
     """
 
     samples: Samples
+    motion: Array
     normals: Array
     area_m2: Array
     warnings: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
         """Copy and freeze."""
-        object.__setattr__(self, "normals", frozen(self.normals))
-        object.__setattr__(self, "area_m2", frozen(self.area_m2))
+        for name in ("motion", "normals", "area_m2"):
+            object.__setattr__(self, name, frozen(getattr(self, name)))
 
     @property
     def radius_m(self) -> float:
@@ -82,7 +85,8 @@ class BaffledFace:
         spread = side * samples.air.density_kg_m3 / (2.0 * np.pi) * self.area_m2 / distance
         heard = np.empty(samples.count, dtype=np.complex128)
         for part in samples.chunks():
-            flow = np.einsum("hni,ni->hn", samples.motion[part], self.normals) * spread
-            phase = samples.wavenumber_1_m[part, None] * (reference_m - distance)
-            heard[part] = np.einsum("hn,hn->h", flow, np.exp(1j * phase))
+            turned = phasor(samples.wavenumber_1_m[part, None] * (reference_m - distance))
+            motion = self.motion[part]
+            heard[part].real = (motion * turned.cosine) @ spread
+            heard[part].imag = (motion * turned.sine) @ spread
         return samples.padded(heard)

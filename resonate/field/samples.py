@@ -1,4 +1,4 @@
-"""Where a body moves the air: radiating samples with the motion of its heard modes."""
+"""Where a body moves the air: its radiating samples and what its sounding modes do there."""
 
 from __future__ import annotations
 
@@ -20,8 +20,8 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
-# Numbers in one chunk of a sum over modes and samples: about 16 MB of complex values.
-CHUNK = 1_000_000
+# Numbers in one chunk of a sum over modes and samples: the 120 kB of an intermediate stay in the cache.
+CHUNK = 15_000
 
 
 def frozen(values: Array) -> Array:
@@ -33,7 +33,7 @@ def frozen(values: Array) -> Array:
 
 @dataclass(frozen=True, slots=True)
 class Samples:
-    """Radiating samples of one body and how its sounding modes move them.
+    """Radiating samples of one body and the sounding modes that move them.
 
     Modes above the heard band and swings of the whole body do not sound.
 
@@ -43,8 +43,6 @@ class Samples:
         Name of the body.
     points_m : Array
         (n, 3) samples in the body frame.
-    motion : Array
-        (h, n, 3) displacement of the samples in each sounding mode, kg**-0.5.
     wavenumber_1_m : Array
         (h,) wavenumber in air of each sounding mode.
     modes : int
@@ -59,7 +57,6 @@ class Samples:
 
     body: str
     points_m: Array
-    motion: Array
     wavenumber_1_m: Array
     modes: int
     first: int
@@ -68,7 +65,7 @@ class Samples:
 
     def __post_init__(self) -> None:
         """Copy and freeze."""
-        for name in ("points_m", "motion", "wavenumber_1_m"):
+        for name in ("points_m", "wavenumber_1_m"):
             object.__setattr__(self, name, frozen(getattr(self, name)))
 
     @property
@@ -112,22 +109,50 @@ class Samples:
         return full
 
 
+@dataclass(frozen=True, slots=True)
+class Phasor:
+    """Cosine and sine of an array of angles."""
+
+    cosine: Array
+    sine: Array
+
+
+def phasor(angle: Array) -> Phasor:
+    """Cosine and sine to 1e-7.
+
+    Single precision is thirty times as fast here, and a microphone before a turning body
+    needs hundreds of sums over all modes and samples. Whole turns are taken off in double precision
+    first, so that the error does not grow with distance: it stays 130 dB below what the samples
+    would make together.
+    """
+    turns = angle / (2.0 * np.pi)
+    turns -= np.rint(turns)
+    rest = (2.0 * np.pi * turns).astype(np.float32)
+    return Phasor(np.cos(rest).astype(np.float64), np.sin(rest).astype(np.float64))
+
+
 def samples_of(body: Body, modes: ModeSet, air: Air) -> Samples:
-    """Sample a body's radiator and the motion of its sounding modes."""
-    radiator = body.radiator
-    sounding = slice(modes.swing, max(modes.heard, modes.swing))
-    moved = np.asarray(body.probe(radiator.points_m) @ modes.shape[:, sounding])
-    motion = moved.reshape(len(radiator.points_m), 3, -1).transpose(2, 0, 1)
+    """Sample a body's radiator."""
     return Samples(
         body=body.name,
-        points_m=radiator.points_m,
-        motion=motion,
-        wavenumber_1_m=modes.omega[sounding] / air.speed_m_s,
+        points_m=body.radiator.points_m,
+        wavenumber_1_m=modes.omega[_sounding(modes)] / air.speed_m_s,
         modes=modes.count,
         first=modes.swing,
         near_m=_near_m(body),
         air=air,
     )
+
+
+def motion_of(body: Body, modes: ModeSet) -> Array:
+    """Displacement (3, h, n) of the radiating samples in each sounding mode, kg**-0.5."""
+    points = body.radiator.points_m
+    moved = np.asarray(body.probe(points) @ modes.shape[:, _sounding(modes)])
+    return np.ascontiguousarray(moved.reshape(len(points), 3, -1).transpose(1, 2, 0))
+
+
+def _sounding(modes: ModeSet) -> slice:
+    return slice(modes.swing, max(modes.heard, modes.swing))
 
 
 def _near_m(body: Body) -> float:

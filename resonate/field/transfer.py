@@ -12,7 +12,7 @@ import numpy as np
 
 from resonate.field.dipoles import DipoleLine
 from resonate.field.rayleigh import BaffledFace
-from resonate.field.samples import samples_of
+from resonate.field.samples import motion_of, samples_of
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -65,13 +65,12 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
     Transfer
         A baffled Rayleigh sum for skins and plates, compact dipoles for lines.
     """
-    samples = samples_of(body, modes, air)
-    radiator = body.radiator
+    samples, motion, radiator = samples_of(body, modes, air), motion_of(body, modes), body.radiator
     if radiator.kind == "dipoles":
-        warnings = _line_warnings(body, modes, air)
-        return DipoleLine(samples, radiator.weights, warnings)
+        return DipoleLine(samples, motion, radiator.weights, _line_warnings(body, modes, air))
+    outward = np.einsum("ihn,ni->hn", motion, radiator.normals)
     warnings = _face_warnings(body, modes, air, samples.radius_m)
-    return BaffledFace(samples, radiator.normals, radiator.weights[:, 0], warnings)
+    return BaffledFace(samples, outward, radiator.normals, radiator.weights[:, 0], warnings)
 
 
 def _face_warnings(body: Body, modes: ModeSet, air: Air, radius_m: float) -> tuple[str, ...]:

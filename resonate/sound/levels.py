@@ -131,7 +131,8 @@ def true_peak(samples: Array) -> float:
         blocks = -(-len(channel) // PIECE)
         padded = np.zeros((blocks + 2) * PIECE)
         padded[PIECE : PIECE + len(channel)] = channel
-        loud = np.max(np.abs(padded.reshape(-1, PIECE)), axis=1)
+        pieces = padded.reshape(-1, PIECE)
+        loud = np.maximum(np.max(pieces, axis=1), -np.min(pieces, axis=1))
         local = np.maximum(np.maximum(loud[:-2], loud[1:-1]), loud[2:])
         windows = np.lib.stride_tricks.sliding_window_view(padded, 2 * HALF_TAPS)
         for block in np.argsort(-local, kind="stable"):
@@ -162,13 +163,13 @@ def weighted_energy(samples: Array, rate_hz: float) -> Array:
     from scipy.signal import sosfilt  # noqa: PLC0415 (heavy)
 
     sections = k_weighting(rate_hz)
-    power = np.zeros(len(samples))
+    energy = np.zeros(len(samples) + 1)
     for channel in np.asarray(samples).T:
         state = np.zeros((2, 2))
         for begin in range(0, len(channel), BLOCK):
             part, state = sosfilt(sections, channel[begin : begin + BLOCK], zi=state)
-            power[begin : begin + BLOCK] += part**2
-    return np.concatenate(([0.0], np.cumsum(power)))
+            energy[begin + 1 : begin + 1 + BLOCK] += part**2
+    return np.cumsum(energy, out=energy)
 
 
 def k_weighting(rate_hz: float) -> Array:

@@ -152,11 +152,11 @@ class _Voice:
         # In order of time, so that the loudest sample so far bounds what a ring may leave out.
         peak = 0.0
         for stretch, begin, end in self._blocks(heard):
-            for first, last, lower, upper in heard.spans(begin, end, self.clock):
-                columns = heard.columns(lower, upper)[self.sounding] * self.speed[:, None]
+            for first, last, knot in heard.spans(begin, end, self.clock):
+                columns = heard.columns(knot)[self.sounding] * self.speed[:, None]
                 signal = self._window if stretch.window else self._ringing
                 part = signal(stretch, columns, _Samples(first, last - first, heard.shift), peak)
-                mixed = heard.mix(part, lower=lower, first=first, clock=self.clock)
+                mixed = heard.mix(part, knot=knot, first=first, clock=self.clock)
                 out[first:last] += mixed
                 peak = max(peak, float(np.max(np.abs(mixed), initial=0.0)))
 
