@@ -76,24 +76,29 @@ class Hearing:
 def hearings(
     tracks: Sequence[BodyTrack], transfers: Sequence[Transfer], scene: Scene
 ) -> tuple[tuple[Hearing, ...], ...]:
-    """Place every body before every microphone: a tuple a body, in it one a microphone.
-
-    Distances for arrival times are those from the mass centre at scene time 0.
-    """
+    """Place every body before every microphone: a tuple a body, in it one a microphone."""
     places = np.array([mic.place_m for mic in scene.mics], dtype=np.float64)
-    speed_m_s = Air.of(scene.world).speed_m_s
-    centres = [track.pose(np.zeros(1))[0][0] for track in tracks]
-    distances = [np.linalg.norm(places - centre, axis=1) for centre in centres]
-    common_m = 0.0 if scene.sound.delay or not distances else min(float(np.min(each)) for each in distances)
     return tuple(
         tuple(
-            _hearing(
-                track, transfer, mic_m=place, shift_s=(float(distance) - common_m) / speed_m_s, scene=scene
-            )
-            for place, distance in zip(places, of_body, strict=True)
+            _hearing(track, transfer, mic_m=place, shift_s=float(shift_s), scene=scene)
+            for place, shift_s in zip(places, of_body, strict=True)
         )
-        for track, transfer, of_body in zip(tracks, transfers, distances, strict=True)
+        for track, transfer, of_body in zip(tracks, transfers, arrivals_s(tracks, scene), strict=True)
     )
+
+
+def arrivals_s(tracks: Sequence[BodyTrack], scene: Scene) -> Array:
+    """Arrival minus emission time of each body at each microphone: (bodies, microphones), s.
+
+    From the distance to the mass centre at scene time 0. With ``delay = false`` the smallest of all is taken
+    off every one.
+    """
+    places = np.array([mic.place_m for mic in scene.mics], dtype=np.float64)
+    centres = np.array([track.pose(np.zeros(1))[0][0] for track in tracks]).reshape(-1, 1, 3)
+    distances = np.linalg.norm(places - centres, axis=2)
+    common_m = 0.0 if scene.sound.delay else np.min(distances, initial=np.inf)
+    late: Array = (distances - common_m) / Air.of(scene.world).speed_m_s
+    return late
 
 
 def _hearing(track: BodyTrack, transfer: Transfer, *, mic_m: Array, shift_s: float, scene: Scene) -> Hearing:

@@ -14,6 +14,7 @@ from resonate.errors import ResonateError
 from resonate.run.record import Segment
 from resonate.sound import render as rendering
 from resonate.sound.filter import band_limit
+from resonate.sound.hearing import arrivals_s
 from resonate.sound.render import Sound, render
 
 SPEED = 343.2
@@ -215,6 +216,18 @@ def test_delay_keeps_the_travelling_time(make, rope):
         for delay in (False, True)
     )
     np.testing.assert_allclose(kept[240:], near[:-240], atol=1e-9 * np.max(np.abs(near)))
+
+
+def test_arrivals_are_distances_over_the_speed_of_sound(make):
+    # Time of flight over 10 m at 343.2 m/s: 29.1375291 ms.
+    modes = make.modes([300.0], 0.5)
+    tracks = [make.track(modes, make.struck(modes), place_m=(x, 0.0, 0.0)) for x in (0.0, 4.0)]
+    places = (10.0, 0.0, 0.0), (0.0, 0.0, 6.0)
+    kept = arrivals_s(tracks, make.scene(*places, delay=True))
+    np.testing.assert_allclose(kept[0, 0], 29.1375291e-3, rtol=1e-8)
+    np.testing.assert_allclose(kept * SPEED, [[10.0, 6.0], [6.0, np.sqrt(52.0)]], rtol=1e-12)
+    cut = arrivals_s(tracks, make.scene(*places))
+    np.testing.assert_allclose(cut, kept - kept.min(), atol=1e-15)
 
 
 def test_two_bodies_add_up(make, rope):
