@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import hashlib
 import json
 import struct
@@ -9,6 +10,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
 from resonate.errors import TakeError
+from resonate.take.again import again_findings
 from resonate.take.check_motion import curve_findings, event_findings, glb_findings
 from resonate.take.check_sound import sound_findings
 from resonate.take.readback import UnreadableError
@@ -16,6 +18,8 @@ from resonate.take.report import Finding, Report, equal, within
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
+
+    from resonate.modes.store import ModeStore
 
     Json = dict[str, Any]  # a JSON object holds any JSON value
 
@@ -37,13 +41,18 @@ _DAMAGE: Final = (
 )
 
 
-def check_take(path: Path | str) -> Report:
+def check_take(path: Path | str, *, again: bool = False, store: ModeStore | None = None) -> Report:
     """Measure a take again and compare it with what it promises.
 
     Parameters
     ----------
     path : Path or str
         The folder of the take.
+    again : bool
+        Whether to run the scene once more as well, and to compare contacts and sound with that run to a
+        small part of a sample. Takes as long as making the take did.
+    store : ModeStore, optional
+        Where solved modes are kept; used only with ``again``.
 
     Returns
     -------
@@ -69,10 +78,12 @@ def check_take(path: Path | str) -> Report:
                 fix='name the folder of a take that was made with "manifest" in take.files',
             )
         file = found[0]
-    return Report(folder, tuple(_findings(folder, file)))
+    return Report(folder, tuple(_findings(folder, file, again=again, store=store)))
 
 
-def _findings(folder: Path, manifest_file: Path) -> Iterator[Finding]:
+def _findings(
+    folder: Path, manifest_file: Path, *, again: bool, store: ModeStore | None
+) -> Iterator[Finding]:
     try:
         manifest = json.loads(manifest_file.read_text(encoding="utf-8"))
         listed = [entry["name"] for entry in manifest["files"]]
@@ -90,6 +101,9 @@ def _findings(folder: Path, manifest_file: Path) -> Iterator[Finding]:
         ending = name.removeprefix(manifest_file.stem)
         if ending in measures and (folder / name).is_file():
             yield from _guarded(measures[ending], folder / name, manifest)
+    if again:
+        second_run = functools.partial(again_findings, store=store)
+        yield from _guarded(second_run, manifest_file, manifest)
 
 
 def _guarded(

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any, Final
 import numpy as np
 
 from resonate.take.check_motion import Frames
-from resonate.take.readback import WaveFacts, read_table, read_wave_chunks
+from resonate.take.readback import Table, WaveFacts, read_table, read_wave_chunks
 from resonate.take.report import Finding, equal, within
 from resonate.take.sync import onset_near
 
@@ -49,9 +49,8 @@ def sound_findings(file: Path, manifest: Json) -> Iterator[Finding]:
     events_file = file.with_name(file.name.removesuffix(".wav") + ".events.csv")
     if events_file.is_file():
         table = read_table(events_file)
-        begin, end = table.numbers("begin_s"), table.numbers("end_s")
-        yield from _cue_findings(read_wave_chunks(file), begin, clock, where)
-        yield _onset_finding(samples, begin, end, table.columns["body"], manifest, where)
+        yield from _cue_findings(read_wave_chunks(file), table.numbers("begin_s"), clock, where)
+        yield _onset_finding(samples, table, manifest, where)
 
 
 def _second_reader(file: Path, samples: Array) -> Finding:
@@ -129,8 +128,10 @@ def _true_peak(samples: Array) -> float:
 
 
 def _cue_findings(facts: WaveFacts, begin_s: Array, clock: Frames, where: str) -> Iterator[Finding]:
+    # A contact has a cue when the sample nearest to it is in the file.
     moments = begin_s * clock.sample_rate
-    inside = moments[(moments >= -0.5) & (moments < clock.samples - 0.5)]
+    nearest = np.rint(moments)
+    inside = moments[(nearest >= 0) & (nearest < clock.samples)]
     cues = np.array([sample for sample, _ in facts.cues], dtype=np.float64)
     yield equal("cues", len(cues), len(inside), where=where, fix=_AGAIN)
     if len(cues) == len(inside):
@@ -141,9 +142,8 @@ def _cue_findings(facts: WaveFacts, begin_s: Array, clock: Frames, where: str) -
     yield equal("cues without a label", unnamed, 0, where=where, fix=_AGAIN)
 
 
-def _onset_finding(
-    samples: Array, begin_s: Array, end_s: Array, bodies: list[str], manifest: Json, where: str
-) -> Finding:
+def _onset_finding(samples: Array, table: Table, manifest: Json, where: str) -> Finding:
+    begin_s, end_s, bodies = table.numbers("begin_s"), table.numbers("end_s"), table.columns["body"]
     rate = manifest["clock"]["sample_rate_hz"]
     late_s = manifest["sound"]["delay"]["late_s"]
     misses = []

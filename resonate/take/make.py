@@ -69,12 +69,8 @@ def make_take(
     name = safe_name(scene.title)
     tell = progress or _say_nothing
     with building(Path(out), name, digest=scene.digest, replace=replace) as place:
-        bodies, modes = solve_bodies(scene, store=store, progress=tell)
-        tell("running")
-        from resonate.run.engine import run  # noqa: PLC0415 (heavy)
-
-        record = run(scene, bodies, modes, store=store)
-        _write_files(place, scene, record, bodies=bodies, modes=modes, store=store, progress=tell)
+        ran = run_scene(scene, store=store, progress=tell)
+        _write_files(place, scene, ran, store=store, progress=tell)
     return Path(out) / name
 
 
@@ -82,10 +78,28 @@ def _say_nothing(_: str) -> None:
     """Tell nobody."""
 
 
-def solve_bodies(
+@dataclasses.dataclass(frozen=True, slots=True)
+class Ran:
+    """One run: ``bodies`` and ``modes`` in the order of the scene, and the ``record``."""
+
+    bodies: tuple[Body, ...]
+    modes: tuple[ModeSet, ...]
+    record: Record
+
+
+def run_scene(scene: Scene, *, store: ModeStore | None = None, progress: Progress = _say_nothing) -> Ran:
+    """Build the bodies, find their modes and run; nothing is rendered or written."""
+    from resonate.run.engine import run  # noqa: PLC0415 (heavy)
+
+    bodies, modes = _solve_bodies(scene, store=store, progress=progress)
+    progress("running")
+    return Ran(bodies, modes, run(scene, bodies, modes, store=store))
+
+
+def _solve_bodies(
     scene: Scene, *, store: ModeStore | None, progress: Progress
 ) -> tuple[tuple[Body, ...], tuple[ModeSet, ...]]:
-    """Build every body and find its modes; bodies that are alike are solved once."""
+    # Bodies that are alike are solved once.
     from resonate.body.build import build_body  # noqa: PLC0415 (heavy)
     from resonate.modes.solve import solve_modes, solved_hz  # noqa: PLC0415 (heavy)
     from resonate.modes.store import modes_key  # noqa: PLC0415 (heavy)
@@ -113,14 +127,7 @@ def _renamed(modes: ModeSet, name: str) -> ModeSet:
 
 
 def _write_files(
-    place: Building,
-    scene: Scene,
-    record: Record,
-    *,
-    bodies: Sequence[Body],
-    modes: Sequence[ModeSet],
-    store: ModeStore | None,
-    progress: Progress,
+    place: Building, scene: Scene, ran: Ran, *, store: ModeStore | None, progress: Progress
 ) -> None:
     from resonate.motion.curves import curves as trace  # noqa: PLC0415 (heavy)
     from resonate.take.deliver import write_sound  # noqa: PLC0415 (heavy)
@@ -128,18 +135,19 @@ def _write_files(
     from resonate.take.manifest import write_manifest  # noqa: PLC0415 (heavy)
     from resonate.take.tables import write_curves, write_events  # noqa: PLC0415 (heavy)
 
+    record = ran.record
     path = {kind: place.file(ENDINGS[kind]) for kind in scene.take.files}
-    warnings = [*_notes(modes, store), *record.warnings]
+    warnings = [*_notes(ran.modes, store), *record.warnings]
     heard = None
     if "wav" in path:
         progress("sound")
-        transfers = _transfers(scene, bodies, modes)
+        transfers = transfers_of(scene, ran)
         warnings.extend(note for transfer in transfers for note in transfer.warnings)
         heard = write_sound(path["wav"], scene, record, transfers)
     motion = None
     if "curves" in path or "glb" in path:
         progress("motion")
-        motion = trace(record, bodies, scene)
+        motion = trace(record, ran.bodies, scene)
     if motion is not None and "curves" in path:
         write_curves(path["curves"], motion, scene)
     if motion is not None and "glb" in path:
@@ -154,8 +162,8 @@ def _write_files(
             path["manifest"],
             scene,
             record,
-            bodies=bodies,
-            modes=modes,
+            bodies=ran.bodies,
+            modes=ran.modes,
             heard=heard,
             curves=motion,
             warnings=warnings,
@@ -163,12 +171,13 @@ def _write_files(
         )
 
 
-def _transfers(scene: Scene, bodies: Sequence[Body], modes: Sequence[ModeSet]) -> list[Transfer]:
+def transfers_of(scene: Scene, ran: Ran) -> list[Transfer]:
+    """Radiation of every body into the air of the scene."""
     from resonate.field.air import Air  # noqa: PLC0415 (heavy)
     from resonate.field.transfer import transfer_for  # noqa: PLC0415 (heavy)
 
     air = Air.of(scene.world)
-    return [transfer_for(body, found, air) for body, found in zip(bodies, modes, strict=True)]
+    return [transfer_for(body, found, air) for body, found in zip(ran.bodies, ran.modes, strict=True)]
 
 
 def _notes(modes: Sequence[ModeSet], store: ModeStore | None) -> list[str]:

@@ -208,9 +208,9 @@ def cautions(heard: Heard | None) -> list[str]:
     found = [_PURPOSE]
     if heard is not None and heard.levels.peak_spl_db > LOUD_DB:
         found.append(
-            f"The sound peaks at {heard.levels.peak_spl_db:.1f} dB re 20 uPa at a microphone. Impact sound at "
-            "such levels can harm hearing: play it back far lower. This is a usual caution, not a limit "
-            "value; local codes decide."
+            f"The sound peaks at {heard.levels.peak_spl_db:.1f} dB re 20 uPa at a microphone. "
+            "Impact sound at such levels can harm hearing: play it back far lower. "
+            "This is a usual caution, not a limit value; local codes decide."
         )
     return found
 

@@ -57,7 +57,14 @@ CONTACT_S = 2e-4
 
 
 def make_scene(
-    *, rate="24000/1001", start="01:00:00:00", up="y", unit="m", sample_rate=48000, format="24-bit", length="2 s"
+    *,
+    rate="24000/1001",
+    start="01:00:00:00",
+    up="y",
+    unit="m",
+    sample_rate=48000,
+    format="24-bit",
+    length="2 s",
 ):
     text = SCENE.format(
         rate=rate, start=start, up=up, unit=unit, sample_rate=sample_rate, format=format, length=length
@@ -192,5 +199,10 @@ def make_take(out, *, scene=None, record=None, late_samples=0):
 def kit():
     """The makers above, for tests that cannot import this file."""
     return SimpleNamespace(
-        scene=make_scene, record=make_record, curves=make_curves, sound=make_sound, take=make_take, ledger=Ledger
+        scene=make_scene,
+        record=make_record,
+        curves=make_curves,
+        sound=make_sound,
+        take=make_take,
+        ledger=Ledger,
     )

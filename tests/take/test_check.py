@@ -69,7 +69,9 @@ def test_a_good_take_passes(kit, tmp_path, rate, sample_rate):
     assert "over 2" in onsets.measured
 
 
-@pytest.mark.parametrize("more", [{"format": "16-bit"}, {"format": "float"}, {"up": "z", "unit": "cm"}, {"start": "1001"}])
+@pytest.mark.parametrize(
+    "more", [{"format": "16-bit"}, {"format": "float"}, {"up": "z", "unit": "cm"}, {"start": "1001"}]
+)
 def test_a_good_take_of_another_kind_passes(kit, tmp_path, more):
     report = check_take(kit.take(tmp_path, scene=kit.scene(**more)))
     assert report.ok, "\n".join(map(str, report.findings))

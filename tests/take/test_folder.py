@@ -194,7 +194,12 @@ def test_trouble_elsewhere_is_not_blamed_on_the_take(tmp_path):
 
 def test_leftovers_are_removed_by_the_next_run(tmp_path):
     make(tmp_path, name="mug")
-    for stem in ("mug.partial-aaaaaaaaaaaa", "mug.old-bbbbbbbbbbbb", "pot.partial-aaaaaaaaaaaa", "mug.partial-mine"):
+    for stem in (
+        "mug.partial-aaaaaaaaaaaa",
+        "mug.old-bbbbbbbbbbbb",
+        "pot.partial-aaaaaaaaaaaa",
+        "mug.partial-mine",
+    ):
         (tmp_path / stem).mkdir()
         (tmp_path / stem / "mug.wav").write_text("left")
     make(tmp_path, "second", name="mug", replace=True)

@@ -35,7 +35,9 @@ def events_file(kit, tmp_path, scene, record=None):
 
 
 def test_pandas_reads_both_in_one_line(kit, tmp_path):
-    pandas = pytest.importorskip("pandas", reason="pandas, the independent reader of tables, is not installed")
+    pandas = pytest.importorskip(
+        "pandas", reason="pandas, the independent reader of tables, is not installed"
+    )
     scene = kit.scene()
     path, curves = curves_file(kit, tmp_path, scene)
     table = pandas.read_csv(path)
@@ -99,7 +101,9 @@ def test_timecode_drops_numbers(kit, tmp_path):
 
 
 def test_up_and_unit_change_the_tables(kit, tmp_path):
-    pandas = pytest.importorskip("pandas", reason="pandas, the independent reader of tables, is not installed")
+    pandas = pytest.importorskip(
+        "pandas", reason="pandas, the independent reader of tables, is not installed"
+    )
     scipy_rotation = pytest.importorskip("scipy.spatial.transform").Rotation
     plain = pandas.read_csv(curves_file(kit, tmp_path, kit.scene())[0])
     scene = kit.scene(up="z", unit="cm")

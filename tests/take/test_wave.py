@@ -26,7 +26,11 @@ HEADING = Heading(
     loudness=Loudness(integrated_lufs=-23.456, true_peak_dbtp=-6.02, momentary_lufs=-18.5),
     cues=(Cue(4800, "1 strike mug by spoon"), Cue(9601, "2 strike mug by ladle"), Cue(9602, "3")),
     slate=Slate(
-        project="Galley <mug>", take="0123456789ab", frame_rate="30000/1001", drop=True, tracks=("near & far",)
+        project="Galley <mug>",
+        take="0123456789ab",
+        frame_rate="30000/1001",
+        drop=True,
+        tracks=("near & far",),
     ),
 )
 
@@ -70,7 +74,9 @@ def test_two_readers_find_the_samples(tmp_path, sample_format, channels):
 @pytest.mark.parametrize("sample_format", ["16-bit", "24-bit", "float"])
 @pytest.mark.parametrize("riff_limit", [2**32 - 1, 1000], ids=["RIFF", "RF64"])
 def test_a_metadata_reader_finds_the_header(tmp_path, sample_format, riff_limit):
-    wavinfo = pytest.importorskip("wavinfo", reason="wavinfo, the independent reader of bext, is not installed")
+    wavinfo = pytest.importorskip(
+        "wavinfo", reason="wavinfo, the independent reader of bext, is not installed"
+    )
     path = write(tmp_path / "mug.wav", tone(2), sample_format, riff_limit=riff_limit)
 
     info = wavinfo.WavInfoReader(str(path))
