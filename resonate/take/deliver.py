@@ -64,7 +64,7 @@ def write_sound(path: Path, scene: Scene, record: Record, transfers: Sequence[Tr
         heading=heading(scene, record, levels),
         rng=dither_source(scene) if _dithers(scene) else None,
     )
-    return Heard(levels, sound.channel_names, arrivals(scene, record, transfers))
+    return Heard(levels, sound.channel_names, arrivals(scene, record))
 
 
 def _dithers(scene: Scene) -> bool:
@@ -116,18 +116,19 @@ def heading(scene: Scene, record: Record, levels: Levels) -> Heading:
     )
 
 
-def arrivals(scene: Scene, record: Record, transfers: Sequence[Transfer]) -> Arrivals:
+def arrivals(scene: Scene, record: Record) -> Arrivals:
     """How late every microphone hears every body, and the delay that was taken out of all."""
     from resonate.field.air import Air  # noqa: PLC0415 (only with sound)
-    from resonate.sound.hearing import hearings  # noqa: PLC0415 (only with sound)
+    from resonate.sound.hearing import arrivals_s  # noqa: PLC0415 (only with sound)
 
-    heard = hearings(record.bodies, transfers, scene)
-    late = {
-        track.name: {mic.name: float(pair.shift) for mic, pair in zip(scene.mics, of_body, strict=True)}
-        for track, of_body in zip(record.bodies, heard, strict=True)
-    }
-    centre = record.bodies[0].pose(np.zeros(1))[0][0]
-    mic = scene.mics[0]
-    travel_s = float(np.linalg.norm(np.asarray(mic.place_m) - centre)) / Air.of(scene.world).speed_m_s
-    removed = 0.0 if scene.sound.delay else travel_s - late[record.bodies[0].name][mic.name]
-    return Arrivals(removed_s=removed, late_s=late)
+    late = arrivals_s(record.bodies, scene)
+    names = tuple(mic.name for mic in scene.mics)
+    centre_m = record.bodies[0].pose(np.zeros(1))[0][0]
+    travel_s = float(np.linalg.norm(np.asarray(scene.mics[0].place_m) - centre_m)) / Air.of(scene.world).speed_m_s
+    return Arrivals(
+        removed_s=0.0 if scene.sound.delay else travel_s - float(late[0, 0]),
+        late_s={
+            track.name: {name: float(value) for name, value in zip(names, row, strict=True)}
+            for track, row in zip(record.bodies, late, strict=True)
+        },
+    )
