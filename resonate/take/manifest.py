@@ -10,6 +10,7 @@ import json
 import math
 import platform
 from dataclasses import asdict, dataclass
+from functools import cache
 from importlib.metadata import PackageNotFoundError, version
 from typing import TYPE_CHECKING, Any, Final
 
@@ -120,13 +121,19 @@ def write_manifest(
 
 def versions() -> dict[str, str]:
     """Name what made the take: this package, the interpreter and the numerical libraries."""
-    found = {"resonate": __version__, "python": platform.python_version()}
-    for name in _LIBRARIES:
-        try:
-            found[name] = version(name)
-        except PackageNotFoundError:
-            found[name] = "absent"
-    return found
+    return {
+        "resonate": __version__,
+        "python": platform.python_version(),
+        **{name: _version_of(name) for name in _LIBRARIES},
+    }
+
+
+@cache
+def _version_of(name: str) -> str:
+    try:
+        return version(name)
+    except PackageNotFoundError:
+        return "absent"
 
 
 def clock_facts(clock: Clock) -> Json:
