@@ -124,7 +124,9 @@ def arrivals(scene: Scene, record: Record) -> Arrivals:
     late = arrivals_s(record.bodies, scene)
     names = tuple(mic.name for mic in scene.mics)
     centre_m = record.bodies[0].pose(np.zeros(1))[0][0]
-    travel_s = float(np.linalg.norm(np.asarray(scene.mics[0].place_m) - centre_m)) / Air.of(scene.world).speed_m_s
+    travel_s = (
+        float(np.linalg.norm(np.asarray(scene.mics[0].place_m) - centre_m)) / Air.of(scene.world).speed_m_s
+    )
     return Arrivals(
         removed_s=0.0 if scene.sound.delay else travel_s - float(late[0, 0]),
         late_s={

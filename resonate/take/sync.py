@@ -56,11 +56,11 @@ def sync_by_correlation(
         raise TakeError(what="silence has no place in time", where="sync", fix="pass a channel that sounds")
     size = 1 << int(np.ceil(np.log2(len(wave) + len(reference))))
     cross = np.fft.rfft(wave, size) * np.conj(np.fft.rfft(reference, size))
-    correlation = np.fft.irfft(cross, size)
-    whole = int(np.argmax(correlation))
-    whole = whole - size if whole > size // 2 else whole
     turns = np.arange(len(cross)) / size
     used = turns * rate_hz <= (_BAND * rate_hz if below_hz is None else below_hz)
+    correlation = np.fft.irfft(np.where(used, cross, 0.0), size)
+    whole = int(np.argmax(correlation))
+    whole = whole - size if whole > size // 2 else whole
     rest = cross[used] * np.exp(2j * np.pi * turns[used] * whole)
     # Least squares of phase = -2 pi turns * delay, weighted by power.
     weight = np.abs(rest)

@@ -38,7 +38,9 @@ def body(begin_s):
     lam = -rate + 1j * np.sqrt(omega**2 - rate**2)
     force = 50.0 * np.sin(np.pi * (np.arange(STEPS) + 0.5) / STEPS)
     z = np.zeros(len(omega), complex)
-    hit = Segment(begin_s, z, None, step_s=STEP_S, force_n=force[None], rows=np.ones((1, len(z))), contacts=(0,))
+    hit = Segment(
+        begin_s, z, None, step_s=STEP_S, force_n=force[None], rows=np.ones((1, len(z))), contacts=(0,)
+    )
     for value in force:
         z = np.exp(lam * STEP_S) * z + np.expm1(lam * STEP_S) / lam * value
     segments = (Segment(-1.0, np.zeros_like(z), None), hit, Segment(hit.end_s, z, None))
@@ -96,7 +98,9 @@ def test_sound_stands_where_the_record_has_it(kit, tmp_path, rate, sample_rate):
     wave, _ = soundfile.read(tmp_path / "mug.wav")
     begin = -8 / Fraction(rate.removesuffix(" drop"))
     times = np.array([float(begin + Fraction(n, sample_rate)) for n in range(len(wave))])
-    late = sync_by_correlation(wave, acceleration(record.bodies[0], times), rate_hz=sample_rate, below_hz=15e3)
+    late = sync_by_correlation(
+        wave, acceleration(record.bodies[0], times), rate_hz=sample_rate, below_hz=15e3
+    )
     # The reference leaves out the 0.2 ms of contact, which is why it is not closer to nought.
     assert abs(late) < 0.05
     assert np.max(np.abs(wave)) == pytest.approx(10.0 ** (-6.0 / 20.0), abs=2.0**-22)
@@ -134,7 +138,9 @@ def test_dither_follows_the_seed_and_only_the_seed(kit, tmp_path):
 
 
 def test_the_header_tells_what_the_scene_says(kit, tmp_path):
-    wavinfo = pytest.importorskip("wavinfo", reason="wavinfo, the independent reader of bext, is not installed")
+    wavinfo = pytest.importorskip(
+        "wavinfo", reason="wavinfo, the independent reader of bext, is not installed"
+    )
     scene = peak_level(kit.scene(rate="30000/1001 drop", start="01:00:00;00"), -6.0)
     heard = write_sound(tmp_path / "mug.wav", scene, record_of(0.3111), [FLAT])
 
