@@ -1,0 +1,146 @@
+"""Kinetic and potential energy as sparse quadratic forms: the one mechanism behind every shape.
+
+A term of the energy is ``1/2 * integral of strain^T law strain``, where each strain is a sum of fields and of
+their slopes. Its second derivative with respect to the nodal values is the sparse matrix assembled here: with
+velocities in place of strains it is the mass.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from scipy.sparse import coo_matrix, csr_matrix
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from resonate.body.spectral import Grid, Quadrature
+
+    Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Strain:
+    """A linear map from fields and slopes to strains.
+
+    ``fields`` (a, f): gain of field f in strain a; ``slopes`` (a, f, dim): gain of its derivative.
+    """
+
+    fields: Array
+    slopes: Array
+
+    @classmethod
+    def of(cls, fields: int, dimension: int, *rows: dict[tuple[int, int | None], float]) -> Strain:
+        """Build from one dictionary a strain: (field, direction or None for the field itself) -> gain."""
+        value = np.zeros((len(rows), fields))
+        slope = np.zeros((len(rows), fields, dimension))
+        for number, row in enumerate(rows):
+            for (field, direction), gain in row.items():
+                if direction is None:
+                    value[number, field] = gain
+                else:
+                    slope[number, field, direction] = gain
+        return cls(value, slope)
+
+
+def strain_matrix(strain: Strain, at: Quadrature) -> Array:
+    """Strains (e, q, a, k * f) of unit nodal values, node-major."""
+    count, fields = strain.fields.shape
+    elements, points, nodes = at.slope.shape[:3]
+    local = np.einsum("af,qk->qakf", strain.fields, at.value)[None]
+    local = local + np.einsum("afd,eqkd->eqakf", strain.slopes, at.slope)
+    return local.reshape(elements, points, count, nodes * fields)
+
+
+def freedoms(grid: Grid, fields: int) -> NDArray[np.int64]:
+    """Global numbers (e, k * f) of each element's nodal values."""
+    return (grid.elements[:, :, None] * fields + np.arange(fields)).reshape(len(grid.elements), -1)
+
+
+def assemble(grid: Grid, at: Quadrature, strain: Strain, law: Array) -> csr_matrix:
+    """Second derivative of ``1/2 integral strain^T law strain``.
+
+    Parameters
+    ----------
+    grid, at : Grid, Quadrature
+        Elements and their integration points.
+    strain : Strain
+        What is strained (or moved).
+    law : Array
+        (a, a) or (e, q, a, a), symmetric: stiffness, or density, per unit length or area.
+
+    Returns
+    -------
+    csr_matrix
+        (n * f, n * f), exactly symmetric.
+    """
+    local = strain_matrix(strain, at)
+    elements, points, count, width = local.shape
+    full = np.broadcast_to(law, (elements, points, count, count))
+    stressed = np.einsum("eqab,eqbj,eq->eqaj", full, local, at.weight, optimize=True)
+    stacked = (elements, points * count, width)
+    blocks = local.reshape(stacked).transpose(0, 2, 1) @ stressed.reshape(stacked)
+    blocks = 0.5 * (blocks + blocks.transpose(0, 2, 1))
+    numbers = freedoms(grid, strain.fields.shape[1])
+    rows = np.broadcast_to(numbers[:, :, None], blocks.shape).ravel()
+    columns = np.broadcast_to(numbers[:, None, :], blocks.shape).ravel()
+    size = len(grid.nodes_m) * strain.fields.shape[1]
+    keep = blocks.ravel() != 0.0
+    matrix = coo_matrix((blocks.ravel()[keep], (rows[keep], columns[keep])), shape=(size, size)).tocsr()
+    return 0.5 * (matrix + matrix.T).tocsr()
+
+
+def sample(grid: Grid, at: Quadrature, strain: Strain, gain: Array) -> csr_matrix:
+    """Strains at every integration point as rows (e * q * a, n * f), each times ``gain`` (e, q, a)."""
+    local = strain_matrix(strain, at) * gain[..., None]
+    elements, points, count, width = local.shape
+    numbers = freedoms(grid, strain.fields.shape[1])
+    columns = np.broadcast_to(numbers[:, None, None, :], local.shape).ravel()
+    rows = np.repeat(np.arange(elements * points * count), width)
+    size = len(grid.nodes_m) * strain.fields.shape[1]
+    keep = local.ravel() != 0.0
+    shape = (elements * points * count, size)
+    return csr_matrix(coo_matrix((local.ravel()[keep], (rows[keep], columns[keep])), shape=shape))
+
+
+def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
+    """Basis (size, f) of all nodal values that keep ``rows @ u = 0``.
+
+    Constraints that share no freedom are treated apart, so that the basis stays sparse. In each group as many
+    freedoms as there are independent constraints are expressed by the others.
+    """
+    from scipy.linalg import qr, solve_triangular  # noqa: PLC0415
+    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415
+
+    if rows.shape[0] == 0:
+        return csr_matrix((np.ones(size), (np.arange(size), np.arange(size))), shape=(size, size))
+    rows = rows.tocsr()
+    touched = np.unique(rows.indices)
+    small = rows[:, touched]
+    graph = (abs(small).T @ abs(small)).tocsr()
+    _, group = connected_components(graph, directed=False)
+    group_of_row = group[small.indices[small.indptr[:-1]]]
+    dependent: list[int] = []
+    entries: list[tuple[NDArray[np.int64], NDArray[np.int64], Array]] = []
+    for number in np.unique(group):
+        columns = np.flatnonzero(group == number)
+        dense = small[group_of_row == number][:, columns].toarray()
+        _, upper, pivot = qr(dense, mode="economic", pivoting=True)
+        diagonal = np.abs(np.diag(upper))
+        rank = int(np.sum(diagonal > 1e-10 * diagonal[0]))
+        chosen, rest = touched[columns[pivot[:rank]]], touched[columns[pivot[rank:]]]
+        dependent.extend(chosen.tolist())
+        if len(rest):
+            link = -solve_triangular(upper[:rank, :rank], upper[:rank, rank:])
+            link[np.abs(link) < 1e-14] = 0.0
+            entries.append((np.repeat(chosen, len(rest)), np.tile(rest, rank), link.ravel()))
+    free = np.setdiff1d(np.arange(size), np.array(dependent, dtype=np.int64))
+    place = np.full(size, -1, dtype=np.int64)
+    place[free] = np.arange(len(free))
+    row = np.concatenate([free, *(entry[0] for entry in entries)])
+    column = place[np.concatenate([free, *(entry[1] for entry in entries)])]
+    value = np.concatenate([np.ones(len(free)), *(entry[2] for entry in entries)])
+    keep = value != 0.0
+    return csr_matrix((value[keep], (row[keep], column[keep])), shape=(size, len(free)))
