@@ -91,7 +91,7 @@ class Forms:
     """The second derivatives of T and V, over the freedoms that the supports leave.
 
     ``stiffness`` and ``mass`` (f, f), N/m and kg; ``basis`` (d, f) maps free to all freedoms;
-    ``springs`` (f, f) the part of the stiffness that belongs to cords; ``damper_rows`` (k, f) with
+    ``cords`` and ``springs`` (f, f) the parts of the stiffness that belong to supports; ``damper_rows`` (k, f) with
     ``damper_ns_m`` (k,): support dashpots; ``heat``: thermoelastic loss.
     """
 
@@ -99,6 +99,7 @@ class Forms:
     mass: csr_matrix
     basis: csr_matrix
     cords: csr_matrix | None
+    springs: csr_matrix | None
     damper_rows: csr_matrix
     damper_ns_m: Array
     heat: tuple[HeatForm, ...]
