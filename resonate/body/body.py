@@ -129,6 +129,10 @@ class Body(Protocol):
         """True when nothing supports it, so that it moves as a whole."""
 
     @property
+    def held(self) -> bool:
+        """True when it must not move as a whole although nothing supports it."""
+
+    @property
     def bands(self) -> BandSpec:
         """The bands asked for."""
 

@@ -1,0 +1,252 @@
+"""Flat regions cut into mapped quadrilaterals, and their edges.
+
+Rectangles and four-cornered convex polygons are mapped directly; a circle is a square core with four curved
+blocks round it; a ring is a polar grid; a triangle is three quadrilaterals; any other polygon is triangulated and
+each triangle cut in three.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.body.polygon import quadrilaterals
+from resonate.body.spectral import Grid, lobatto, weld
+from resonate.errors import BodyError
+from resonate.scene.model import CircleOutline, PolygonOutline, RectangleOutline, RingOutline
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from numpy.typing import NDArray
+
+    from resonate.scene.model import Outline
+
+    Array = NDArray[np.float64]
+    Map = Callable[[Array, Array], Array]
+
+# Half side of the square core of a circle as a share of the radius, and how far its sides bulge.
+_CORE = 0.5
+_BULGE = 0.12
+
+
+@dataclass(frozen=True, slots=True)
+class Edge:
+    """One named edge: nodes (k,) of the grid, their outward normals (k, 2) and share of the length (k,)."""
+
+    nodes: NDArray[np.int64]
+    outward: Array
+    share: Array
+
+
+def area(outline: Outline) -> float:
+    """Area of the region, m^2."""
+    if isinstance(outline, RectangleOutline):
+        return outline.a_m * outline.b_m
+    if isinstance(outline, CircleOutline):
+        return float(np.pi / 4.0 * outline.diameter_m**2)
+    if isinstance(outline, RingOutline):
+        return float(np.pi / 4.0 * (outline.outer_m**2 - outline.inner_m**2))
+    x, z = np.array(outline.corners_m).T
+    return abs(float(0.5 * np.sum(x * np.roll(z, -1) - z * np.roll(x, -1))))
+
+
+def box(outline: Outline) -> tuple[Array, Array]:
+    """Lower and upper corner (2,) of the bounding box, m."""
+    if isinstance(outline, RectangleOutline):
+        half = 0.5 * np.array([outline.a_m, outline.b_m])
+    elif isinstance(outline, CircleOutline):
+        half = np.full(2, 0.5 * outline.diameter_m)
+    elif isinstance(outline, RingOutline):
+        half = np.full(2, 0.5 * outline.outer_m)
+    else:
+        corners = np.array(outline.corners_m)
+        return corners.min(axis=0), corners.max(axis=0)
+    return -half, half
+
+
+def contains(outline: Outline, points_m: Array) -> NDArray[np.bool_]:
+    """Whether points (k, 2) lie in the region (k,)."""
+    x, z = points_m[:, 0], points_m[:, 1]
+    if isinstance(outline, RectangleOutline):
+        return (np.abs(x) <= 0.5 * outline.a_m) & (np.abs(z) <= 0.5 * outline.b_m)
+    if isinstance(outline, CircleOutline):
+        return np.hypot(x, z) <= 0.5 * outline.diameter_m
+    if isinstance(outline, RingOutline):
+        radius = np.hypot(x, z)
+        return (radius <= 0.5 * outline.outer_m) & (radius >= 0.5 * outline.inner_m)
+    inside = np.zeros(len(points_m), dtype=bool)
+    corners = np.array(outline.corners_m)
+    for (x0, z0), (x1, z1) in zip(corners, np.roll(corners, -1, axis=0), strict=True):
+        crosses = (z0 > z) != (z1 > z)
+        where = x0 + (z - z0) / np.where(z1 == z0, 1.0, z1 - z0) * (x1 - x0)
+        inside ^= crosses & (x < where)
+    return inside
+
+
+def _patch(mapping: Map, first: int, second: int, order: int) -> Array:
+    # Elements (first * second, (order + 1)**2, 2) of a map from the unit square.
+    node = 0.5 * (lobatto(order) + 1.0)
+    u = (np.arange(first)[:, None] + node).ravel() / first
+    v = (np.arange(second)[:, None] + node).ravel() / second
+    grid_u, grid_v = np.meshgrid(u, v, indexing="ij")
+    places = mapping(grid_u, grid_v)
+    n = order + 1
+    blocks = places.reshape(first, n, second, n, 2).transpose(0, 2, 1, 3, 4)
+    return blocks.reshape(first * second, n * n, 2)
+
+
+def _bilinear(corners: Array) -> Map:
+    a, b, c, d = corners
+
+    def mapping(u: Array, v: Array) -> Array:
+        u, v = u[..., None], v[..., None]
+        return (1 - u) * (1 - v) * a + u * (1 - v) * b + u * v * c + (1 - u) * v * d
+
+    return mapping
+
+
+def _circle(radius: float, first: int, second: int, order: int) -> Array:
+    core = _CORE * radius
+
+    def side(t: Array) -> tuple[Array, Array]:
+        # Right side of the core, from the lower to the upper corner, bulged outward.
+        along = 2.0 * t - 1.0
+        return core * (1.0 + _BULGE * (1.0 - along**2)), core * along
+
+    def middle(u: Array, v: Array) -> Array:
+        # Coons blend of the four bulged sides.
+        across_u, across_v = 2.0 * u - 1.0, 2.0 * v - 1.0
+        x = core * across_u * (1.0 + _BULGE * (1.0 - across_v**2))
+        z = core * across_v * (1.0 + _BULGE * (1.0 - across_u**2))
+        return np.stack((x, z), axis=-1)
+
+    blocks = [_patch(middle, first, first, order)]
+    for quarter in range(4):
+        turn = 0.5 * np.pi * quarter
+        cosine, sine = np.round(np.cos(turn)), np.round(np.sin(turn))
+
+        def outer(u: Array, v: Array, cosine: float = cosine, sine: float = sine) -> Array:
+            x0, z0 = side(v)
+            angle = 0.25 * np.pi * (2.0 * v - 1.0)
+            x = (1 - u) * x0 + u * radius * np.cos(angle)
+            z = (1 - u) * z0 + u * radius * np.sin(angle)
+            return np.stack((cosine * x - sine * z, sine * x + cosine * z), axis=-1)
+
+        blocks.append(_patch(outer, second, first, order))
+    return np.concatenate(blocks)
+
+
+def _ring(outer: float, inner: float, radial: int, round_about: int, order: int) -> Array:
+    def mapping(u: Array, v: Array) -> Array:
+        radius = inner + u * (outer - inner)
+        angle = 2.0 * np.pi * v
+        return np.stack((radius * np.cos(angle), radius * np.sin(angle)), axis=-1)
+
+    return _patch(mapping, radial, round_about, order)
+
+
+def _polygon(corners: Array, size_m: float, order: int) -> Array:
+    if len(corners) == 4 and _convex(corners):  # noqa: PLR2004 (four corners)
+        sides = np.linalg.norm(np.roll(corners, -1, axis=0) - corners, axis=1)
+        first = max(2, int(np.ceil(max(sides[0], sides[2]) / size_m)))
+        second = max(2, int(np.ceil(max(sides[1], sides[3]) / size_m)))
+        return _patch(_bilinear(corners), first, second, order)
+    pieces = quadrilaterals(corners, size_m)
+    return np.concatenate([_patch(_bilinear(quad), count, count, order) for quad, count in pieces])
+
+
+def _convex(corners: Array) -> bool:
+    ahead = np.roll(corners, -1, axis=0) - corners
+    turn = ahead[:, 0] * np.roll(ahead[:, 1], -1) - ahead[:, 1] * np.roll(ahead[:, 0], -1)
+    # A corner opened nearly straight would fold the map.
+    lengths = np.linalg.norm(ahead, axis=1)
+    return bool(np.all(turn / (lengths * np.roll(lengths, -1)) > 0.05) or np.all(turn / lengths**2 < -0.05))
+
+
+def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
+    """Cut a region into elements of about ``size_m`` along x and z.
+
+    Raises
+    ------
+    BodyError
+        If a polygon cannot be divided.
+    """
+    low, high = box(outline)
+    if isinstance(outline, RectangleOutline):
+        first = max(2, int(np.ceil(outline.a_m / size_m[0])))
+        second = max(2, int(np.ceil(outline.b_m / size_m[1])))
+        corners = np.array([low, [high[0], low[1]], high, [low[0], high[1]]])
+        return weld(_patch(_bilinear(corners), first, second, order), order)
+    size = min(size_m)
+    if isinstance(outline, CircleOutline):
+        radius = 0.5 * outline.diameter_m
+        first = max(1, int(np.ceil(2.0 * _CORE * (1.0 + _BULGE) * radius / size)))
+        second = max(1, int(np.ceil((1.0 - _CORE) * radius / size)))
+        return weld(_circle(radius, first, second, order), order)
+    if isinstance(outline, RingOutline):
+        outer, inner = 0.5 * outline.outer_m, 0.5 * outline.inner_m
+        radial = max(1, int(np.ceil((outer - inner) / size)))
+        return weld(_ring(outer, inner, radial, max(8, int(np.ceil(2 * np.pi * outer / size))), order), order)
+    grid = weld(_polygon(np.array(outline.corners_m), size, order), order)
+    if abs(float(grid.quadrature().weight.sum()) - area(outline)) > 1e-6 * area(outline):
+        raise BodyError(
+            what="the polygon could not be divided into elements that fill it",
+            where="an outline",
+            fix="remove very sharp or very close corners",
+        )
+    return grid
+
+
+def edges(outline: Outline, grid: Grid) -> dict[str, Edge]:
+    """Every named edge of a region."""
+    low, high = box(outline)
+    nodes, size = grid.nodes_m, float((high - low).max())
+    found: dict[str, Edge] = {}
+    if isinstance(outline, RectangleOutline):
+        for axis, letter in enumerate("xz"):
+            for sign, name, end in ((-1.0, "-", low), (1.0, "+", high)):
+                at = np.flatnonzero(np.abs(nodes[:, axis] - end[axis]) < 1e-7 * size)
+                outward = np.zeros((len(at), 2))
+                outward[:, axis] = sign
+                found[letter + name] = Edge(at, outward, _share(nodes[at, 1 - axis], closed=False))
+    elif isinstance(outline, PolygonOutline):
+        corners = np.array(outline.corners_m)
+        swept = corners[:, 0] * np.roll(corners[:, 1], -1) - corners[:, 1] * np.roll(corners[:, 0], -1)
+        hand = 1.0 if float(swept.sum()) > 0.0 else -1.0
+        for number, (start, stop) in enumerate(zip(corners, np.roll(corners, -1, axis=0), strict=True), 1):
+            length = float(np.linalg.norm(stop - start))
+            along = (stop - start) / length
+            offset = nodes - start
+            far = np.abs(offset[:, 0] * along[1] - offset[:, 1] * along[0])
+            run = offset @ along
+            at = np.flatnonzero((far < 1e-7 * size) & (run > -1e-7 * size) & (run < length + 1e-7 * size))
+            outward = np.tile(hand * np.array([along[1], -along[0]]), (len(at), 1))
+            found[f"edge{number}"] = Edge(at, outward, _share(run[at], closed=False))
+    else:
+        rims = {"outer": high[0]}
+        if isinstance(outline, RingOutline):
+            rims["inner"] = 0.5 * outline.inner_m
+        radius = np.hypot(nodes[:, 0], nodes[:, 1])
+        for name, rim in rims.items():
+            at = np.flatnonzero(np.abs(radius - rim) < 1e-7 * size)
+            sign = -1.0 if name == "inner" else 1.0
+            angle = np.arctan2(nodes[at, 1], nodes[at, 0])
+            found[name] = Edge(at, sign * nodes[at] / rim, _share(angle, closed=True))
+    return found
+
+
+def _share(run: Array, *, closed: bool) -> Array:
+    # Trapezoid shares of an edge, sum 1, so that a spread spring does not depend on where nodes crowd.
+    order = np.argsort(run)
+    gaps = np.diff(run[order])
+    weight = np.zeros(len(run))
+    weight[order[:-1]] += 0.5 * gaps
+    weight[order[1:]] += 0.5 * gaps
+    if closed:
+        last = 2.0 * np.pi - (run[order[-1]] - run[order[0]])
+        weight[order[0]] += 0.5 * last
+        weight[order[-1]] += 0.5 * last
+    return weight / weight.sum()
