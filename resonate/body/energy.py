@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from scipy.sparse import coo_matrix, csr_matrix
+from scipy.sparse.csgraph import connected_components
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -49,14 +50,26 @@ def strain_matrix(strain: Strain, at: Quadrature) -> Array:
     """Strains (e, q, a, k * f) of unit nodal values, node-major."""
     count, fields = strain.fields.shape
     elements, points, nodes = at.slope.shape[:3]
-    local = np.einsum("af,qk->qakf", strain.fields, at.value)[None]
-    local = local + np.einsum("afd,eqkd->eqakf", strain.slopes, at.slope)
+    local = np.zeros((elements, points, count, nodes, fields))
+    for row, field in zip(*np.nonzero(strain.fields), strict=True):
+        local[:, :, row, :, field] += strain.fields[row, field] * at.value
+    for row, field, direction in zip(*np.nonzero(strain.slopes), strict=True):
+        local[:, :, row, :, field] += strain.slopes[row, field, direction] * at.slope[..., direction]
     return local.reshape(elements, points, count, nodes * fields)
 
 
 def freedoms(grid: Grid, fields: int) -> NDArray[np.int64]:
     """Global numbers (e, k * f) of each element's nodal values."""
     return (grid.elements[:, :, None] * fields + np.arange(fields)).reshape(len(grid.elements), -1)
+
+
+def _coupled(strain: Strain, law: Array) -> list[NDArray[np.int64]]:
+    """Groups of fields that no term ties together, each small enough to be assembled apart."""
+    uses = (np.abs(strain.fields) + np.abs(strain.slopes).sum(axis=2)) > 0.0
+    tied = np.abs(law).reshape(-1, *law.shape[-2:]).max(axis=0) > 0.0
+    graph = (uses.T.astype(np.int64) @ tied.astype(np.int64) @ uses.astype(np.int64)) > 0
+    _, group = connected_components(csr_matrix(graph), directed=False)
+    return [np.flatnonzero(group == number) for number in range(int(group.max()) + 1)]
 
 
 def assemble(grid: Grid, at: Quadrature, strain: Strain, law: Array) -> csr_matrix:
@@ -74,22 +87,32 @@ def assemble(grid: Grid, at: Quadrature, strain: Strain, law: Array) -> csr_matr
     Returns
     -------
     csr_matrix
-        (n * f, n * f), exactly symmetric.
+        (n * f, n * f), symmetric to round-off.
     """
+    fields = strain.fields.shape[1]
+    values, rows, columns = [], [], []
+    for group in _coupled(strain, law):
+        uses = (np.abs(strain.fields[:, group]) + np.abs(strain.slopes[:, group]).sum(axis=2)).sum(axis=1) > 0.0
+        part = Strain(strain.fields[np.ix_(uses, group)], strain.slopes[uses][:, group])
+        blocks = _element_blocks(at, part, law[..., uses, :][..., uses])
+        numbers = (grid.elements[:, :, None] * fields + group).reshape(len(grid.elements), -1)
+        keep = blocks.ravel() != 0.0
+        values.append(blocks.ravel()[keep])
+        rows.append(np.broadcast_to(numbers[:, :, None], blocks.shape).ravel()[keep])
+        columns.append(np.broadcast_to(numbers[:, None, :], blocks.shape).ravel()[keep])
+    size = len(grid.nodes_m) * fields
+    entries = (np.concatenate(values), (np.concatenate(rows), np.concatenate(columns)))
+    return coo_matrix(entries, shape=(size, size)).tocsr()
+
+
+def _element_blocks(at: Quadrature, strain: Strain, law: Array) -> Array:
     local = strain_matrix(strain, at)
     elements, points, count, width = local.shape
-    full = np.broadcast_to(law, (elements, points, count, count))
-    stressed = np.einsum("eqab,eqbj,eq->eqaj", full, local, at.weight, optimize=True)
+    weighted = law * at.weight[..., None, None]
+    stressed = np.matmul(weighted, local)
     stacked = (elements, points * count, width)
     blocks = local.reshape(stacked).transpose(0, 2, 1) @ stressed.reshape(stacked)
-    blocks = 0.5 * (blocks + blocks.transpose(0, 2, 1))
-    numbers = freedoms(grid, strain.fields.shape[1])
-    rows = np.broadcast_to(numbers[:, :, None], blocks.shape).ravel()
-    columns = np.broadcast_to(numbers[:, None, :], blocks.shape).ravel()
-    size = len(grid.nodes_m) * strain.fields.shape[1]
-    keep = blocks.ravel() != 0.0
-    matrix = coo_matrix((blocks.ravel()[keep], (rows[keep], columns[keep])), shape=(size, size)).tocsr()
-    return 0.5 * (matrix + matrix.T).tocsr()
+    return 0.5 * (blocks + blocks.transpose(0, 2, 1))
 
 
 def sample(grid: Grid, at: Quadrature, strain: Strain, gain: Array) -> csr_matrix:
@@ -112,7 +135,6 @@ def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
     freedoms as there are independent constraints are expressed by the others.
     """
     from scipy.linalg import qr, solve_triangular  # noqa: PLC0415
-    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415
 
     if rows.shape[0] == 0:
         return csr_matrix((np.ones(size), (np.arange(size), np.arange(size))), shape=(size, size))

@@ -30,6 +30,8 @@ if TYPE_CHECKING:
 # Half side of the square core of a circle as a share of the radius, and how far its sides bulge.
 _CORE = 0.5
 _BULGE = 0.12
+# An element may be this share larger than asked before one more is laid.
+_SLACK = 0.25
 
 
 @dataclass(frozen=True, slots=True)
@@ -151,8 +153,8 @@ def _ring(outer: float, inner: float, radial: int, round_about: int, order: int)
 def _polygon(corners: Array, size_m: float, order: int) -> Array:
     if len(corners) == 4 and _convex(corners):  # noqa: PLR2004 (four corners)
         sides = np.linalg.norm(np.roll(corners, -1, axis=0) - corners, axis=1)
-        first = max(2, int(np.ceil(max(sides[0], sides[2]) / size_m)))
-        second = max(2, int(np.ceil(max(sides[1], sides[3]) / size_m)))
+        first = max(2, int(np.ceil(max(sides[0], sides[2]) / size_m - _SLACK)))
+        second = max(2, int(np.ceil(max(sides[1], sides[3]) / size_m - _SLACK)))
         return _patch(_bilinear(corners), first, second, order)
     pieces = quadrilaterals(corners, size_m)
     return np.concatenate([_patch(_bilinear(quad), count, count, order) for quad, count in pieces])
@@ -176,20 +178,20 @@ def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
     """
     low, high = box(outline)
     if isinstance(outline, RectangleOutline):
-        first = max(2, int(np.ceil(outline.a_m / size_m[0])))
-        second = max(2, int(np.ceil(outline.b_m / size_m[1])))
+        first = max(2, int(np.ceil(outline.a_m / size_m[0] - _SLACK)))
+        second = max(2, int(np.ceil(outline.b_m / size_m[1] - _SLACK)))
         corners = np.array([low, [high[0], low[1]], high, [low[0], high[1]]])
         return weld(_patch(_bilinear(corners), first, second, order), order)
     size = min(size_m)
     if isinstance(outline, CircleOutline):
         radius = 0.5 * outline.diameter_m
-        first = max(1, int(np.ceil(2.0 * _CORE * (1.0 + _BULGE) * radius / size)))
-        second = max(1, int(np.ceil((1.0 - _CORE) * radius / size)))
+        first = max(1, int(np.ceil(2.0 * _CORE * (1.0 + _BULGE) * radius / size - _SLACK)))
+        second = max(1, int(np.ceil((1.0 - _CORE) * radius / size - _SLACK)))
         return weld(_circle(radius, first, second, order), order)
     if isinstance(outline, RingOutline):
         outer, inner = 0.5 * outline.outer_m, 0.5 * outline.inner_m
-        radial = max(1, int(np.ceil((outer - inner) / size)))
-        return weld(_ring(outer, inner, radial, max(8, int(np.ceil(2 * np.pi * outer / size))), order), order)
+        radial = max(1, int(np.ceil((outer - inner) / size - _SLACK)))
+        return weld(_ring(outer, inner, radial, max(8, int(np.ceil(2 * np.pi * outer / size - _SLACK))), order), order)
     grid = weld(_polygon(np.array(outline.corners_m), size, order), order)
     if abs(float(grid.quadrature().weight.sum()) - area(outline)) > 1e-6 * area(outline):
         raise BodyError(

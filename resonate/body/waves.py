@@ -38,7 +38,7 @@ def bending_wavenumber(
     square = np.where(
         slow >= 0.0,
         (slow + np.sqrt(inside)) / (2.0 * stiff),
-        2.0 * fast / np.maximum(np.sqrt(inside) - slow, 1e-300),
+        2.0 * fast / np.where(slow < 0.0, np.sqrt(inside) - slow, 1.0),
     )
     return np.sqrt(np.maximum(square, 0.0))
 
