@@ -191,7 +191,8 @@ def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
     if isinstance(outline, RingOutline):
         outer, inner = 0.5 * outline.outer_m, 0.5 * outline.inner_m
         radial = max(1, int(np.ceil((outer - inner) / size - _SLACK)))
-        return weld(_ring(outer, inner, radial, max(8, int(np.ceil(2 * np.pi * outer / size - _SLACK))), order), order)
+        about = max(8, int(np.ceil(np.pi * (outer + inner) / size)))
+        return weld(_ring(outer, inner, radial, about, order), order)
     grid = weld(_polygon(np.array(outline.corners_m), size, order), order)
     if abs(float(grid.quadrature().weight.sum()) - area(outline)) > 1e-6 * area(outline):
         raise BodyError(

@@ -14,8 +14,10 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
     IntArray = NDArray[np.int64]
 
-# Each quadrilateral of a cut triangle spans about this share of the triangle's side.
-_HALF = 0.5
+# Side of the triangles whose thirds have the area of a square of side 1.
+_TRIANGLE = 2.5
+# An element may be this share larger than asked before one more is laid.
+_SLACK = 0.25
 _TRIES = 8
 
 
@@ -30,10 +32,11 @@ def quadrilaterals(corners: Array, size_m: float) -> list[tuple[Array, int]]:
         Wanted side of the final elements.
     """
     if len(corners) == 3:  # noqa: PLR2004 (a triangle)
-        longest = float(np.linalg.norm(np.roll(corners, -1, axis=0) - corners, axis=1).max())
-        count = max(2, int(np.ceil(_HALF * longest / size_m)))
+        a, b = corners[1] - corners[0], corners[2] - corners[0]
+        side = float(np.sqrt(abs(a[0] * b[1] - a[1] * b[0]) / 6.0))
+        count = max(2, int(np.ceil(side / size_m - _SLACK)))
         return [(quad, count) for quad in _split(corners)]
-    points, triangles = triangulate(corners, 2.0 * size_m)
+    points, triangles = triangulate(corners, _TRIANGLE * size_m)
     return [(quad, 1) for triangle in triangles for quad in _split(points[triangle])]
 
 
