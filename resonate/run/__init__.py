@@ -1,1 +1,1 @@
-"""The run room."""
+"""Bodies and happenings advanced together in one run."""
