@@ -1,0 +1,46 @@
+"""Where a run leaves what linear vibration can tell: said with numbers, never silently."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from resonate.run.blow import Blow
+    from resonate.run.track import BodyTrack
+
+# Bending beyond this share of the thickness stretches the middle face (Chu & Herrmann 1956).
+DEFLECTION = 0.3
+# Turning faster than this share of the first mode splits and shifts it.
+SPIN = 0.02
+_LOOKS = 256
+
+
+def beyond_linear(track: BodyTrack, blows: Sequence[Blow]) -> tuple[str, ...]:
+    """Warnings about deflection and spin."""
+    notes = []
+    modes = track.modes
+    if not modes.count:
+        return ()
+    for blow in blows:
+        times = blow.begin_s + np.linspace(0.0, 2.0 / float(modes.frequency_hz[0]), _LOOKS)
+        swing = np.sqrt(modes.omega**2 - modes.decay.total**2)
+        moved = blow.row[: modes.count] @ (track.modal(times).imag / swing[:, None])
+        most = float(np.abs(moved).max())
+        if most > DEFLECTION * blow.thickness_m:
+            notes.append(
+                f"body {track.name!r}: strike[{blow.strike}] bends it by {1e3 * most:.3g} mm, "
+                f"{most / blow.thickness_m:.2g} of its thickness; above {DEFLECTION} the pitch would glide, "
+                "which this linear model leaves out"
+            )
+    spins = [float(np.linalg.norm(s.rigid.spin_rad_s)) for s in track.segments if s.rigid is not None]
+    fastest = max(spins, default=0.0)
+    if fastest > SPIN * float(modes.omega[0]):
+        notes.append(
+            f"body {track.name!r}: it turns at {fastest:.3g} rad/s, {fastest / float(modes.omega[0]):.2g} of its first "
+            f"mode; above {SPIN} the modes would shift, which is left out"
+        )
+    return tuple(notes)

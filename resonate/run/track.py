@@ -1,0 +1,212 @@
+"""The whole course of one body, any state of which can be had again from its segments."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.run.flight import fly, matrix, turned
+from resonate.run.kernels.march import replay
+from resonate.run.propagator import coefficients, exponents, from_state, to_state
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from resonate.body.body import Inertia
+    from resonate.modes.modeset import ModeSet
+    from resonate.run.record import Segment
+
+    Array = NDArray[np.float64]
+    ComplexArray = NDArray[np.complex128]
+    IntArray = NDArray[np.int64]
+
+
+def lever_moved(segment: Segment, since_s: Array) -> Array:
+    """Double time integral (c, t) of the forces since the segment began, N s^2."""
+    force = segment.force_n
+    assert force is not None  # noqa: S101 (contact segments only)
+    h, steps = segment.step_s, force.shape[1]
+    pushed = np.concatenate((np.zeros((len(force), 1)), np.cumsum(force, axis=1) * h), axis=1)
+    gone = pushed[:, :-1] * h + 0.5 * force * h**2
+    moved = np.concatenate((np.zeros((len(force), 1)), np.cumsum(gone, axis=1)), axis=1)
+    at = np.clip((since_s / h).astype(np.int64), 0, steps)
+    rest = since_s - at * h
+    last = np.where(at < steps, force[:, np.minimum(at, steps - 1)], 0.0)
+    return np.asarray(moved[:, at] + pushed[:, at] * rest + 0.5 * last * rest**2)
+
+
+@dataclass(frozen=True)
+class BodyTrack:
+    """One body through the run.
+
+    Parameters
+    ----------
+    name, modes : str, ModeSet
+        The body and its modes.
+    segments : tuple[Segment, ...]
+        In order of time, each from a checkpoint.
+    free : bool
+        Whether it moves as a whole.
+    inertia : Inertia
+        Its mass properties.
+    place_m, turn : Array
+        (3,) of its origin and (4,) xyzw: the pose of a supported body.
+    gravity : Array
+        (3,) what acts on a free body, m/s^2.
+    """
+
+    name: str
+    modes: ModeSet
+    segments: tuple[Segment, ...]
+    free: bool
+    inertia: Inertia
+    place_m: Array
+    turn: Array
+    gravity: Array
+
+    @cached_property
+    def begins_s(self) -> Array:
+        """(s,) begin of every segment."""
+        return np.array([segment.begin_s for segment in self.segments])
+
+    def _places(self, times_s: Array) -> IntArray:
+        return np.clip(np.searchsorted(self.begins_s, times_s, side="right") - 1, 0, None)
+
+    def _elastic(self, number: int, times_s: Array) -> ComplexArray:
+        segment, modes = self.segments[number], self.modes
+        decay, count = modes.decay.total, modes.count
+        z = segment.z[:count]
+        since = times_s - segment.begin_s
+        if segment.force_n is None:
+            return np.asarray(z[:, None] * np.exp(exponents(modes.omega, decay)[:, None] * since))
+        assert segment.rows is not None  # noqa: S101 (contact segments have rows)
+        rows = np.ascontiguousarray(segment.rows[:, :count])
+        h, steps = segment.step_s, segment.force_n.shape[1]
+        at = np.clip((since / h).astype(np.int64), 0, steps)
+        wanted, back = np.unique(at, return_inverse=True)
+        q, v = from_state(z, modes.omega, decay)
+        q, v = np.ascontiguousarray(q), np.ascontiguousarray(v)
+        kept_q, kept_v = np.zeros((len(wanted), count)), np.zeros((len(wanted), count))
+        step = coefficients(modes.omega, decay, h).stacked()
+        replay(q, v, step, rows, np.ascontiguousarray(segment.force_n), wanted, kept_q, kept_v)
+        now = to_state(kept_q[back].T, kept_v[back].T, modes.omega[:, None], decay[:, None])
+        rate = exponents(modes.omega, decay)[:, None]
+        rest = (since - at * h)[None]
+        pressed = np.where(at < steps, segment.force_n[:, np.minimum(at, steps - 1)], 0.0)
+        return np.asarray(now * np.exp(rate * rest) + (rows.T @ pressed) * np.expm1(rate * rest) / rate)
+
+    def modal(self, times_s: Array) -> ComplexArray:
+        """Complex state (m, t) of the elastic modes at scene times (t,), in any order."""
+        times = np.asarray(times_s, dtype=np.float64)
+        found = np.zeros((self.modes.count, len(times)), dtype=np.complex128)
+        places = self._places(times)
+        for number in np.unique(places):
+            at = np.flatnonzero(places == number)
+            found[:, at] = self._elastic(int(number), times[at])
+        return found
+
+    def linear(self, times_s: Array) -> Array:
+        """Motions without stiffness (r, t) of a supported body, kg**0.5 m."""
+        times = np.asarray(times_s, dtype=np.float64)
+        count = self.modes.rigid.shape[1]
+        found = np.zeros((count, len(times)))
+        if self.free or count == 0:
+            return found
+        places = self._places(times)
+        for number in np.unique(places):
+            at, segment = np.flatnonzero(places == number), self.segments[number]
+            state = segment.z[self.modes.count :]
+            since = times[at] - segment.begin_s
+            found[:, at] = state.real[:, None] + state.imag[:, None] * since
+            if segment.force_n is not None and segment.rows is not None:
+                found[:, at] += segment.rows[:, self.modes.count :].T @ lever_moved(segment, since)
+        return found
+
+    def pose(self, times_s: Array) -> tuple[Array, Array]:
+        """Place (t, 3) of the mass centre in the world and turn (t, 4) xyzw, continuous in sign."""
+        times = np.asarray(times_s, dtype=np.float64)
+        if not self.free:
+            centre = self.place_m + matrix(self.turn) @ self.inertia.centre_m
+            return np.tile(centre, (len(times), 1)), np.tile(self.turn, (len(times), 1))
+        place, turn = np.zeros((len(times), 3)), np.zeros((len(times), 4))
+        places = self._places(times)
+        for number in np.unique(places):
+            at = np.flatnonzero(places == number)
+            place[at], turn[at] = self._flown(self.segments[number], times[at])
+        # Continuous from the first time on, whatever order the times are asked in.
+        order = np.argsort(times, kind="stable")
+        sorted_turn = turn[order]
+        if len(order):
+            lead = 1.0 if float(sorted_turn[0] @ self.turn) >= 0.0 else -1.0
+            flips = np.sum(sorted_turn[1:] * sorted_turn[:-1], axis=1) < 0.0
+            turn[order] = sorted_turn * (lead * np.cumprod(np.where(np.append(False, flips), -1.0, 1.0)))[:, None]
+        return place, turn
+
+    def _flown(self, segment: Segment, times_s: Array) -> tuple[Array, Array]:
+        assert segment.rigid is not None  # noqa: S101 (free bodies have a rigid state)
+        since = times_s - segment.begin_s
+        place, turn, _, _ = fly(segment.rigid, since, tensor=self.inertia.tensor, gravity=self.gravity)
+        if segment.force_n is not None and segment.axes is not None and segment.arms_m is not None:
+            moved = lever_moved(segment, since)
+            place = place + moved.T @ segment.axes / self.inertia.mass_kg
+            turn = turned(turn, moved.T @ _twist(segment, self.inertia.tensor))
+        return place, turn
+
+    def impulse(self, begin_s: Array, end_s: Array) -> Array:
+        """Modal impulse (m, t): integral of the modal forces from ``begin_s`` to ``end_s`` (t,)."""
+        found = np.zeros((self.modes.count, len(begin_s)))
+        for segment in self.segments:
+            if segment.force_n is None or segment.rows is None:
+                continue
+            inside = _pushed(segment, end_s) - _pushed(segment, begin_s)
+            if np.any(inside):
+                found += segment.rows[:, : self.modes.count].T @ inside
+        return found
+
+    def force(self, times_s: Array) -> Array:
+        """Sum of the contact forces (t,), N."""
+        found = np.zeros(len(times_s))
+        for segment in self.segments:
+            if segment.force_n is None:
+                continue
+            at = np.floor((np.asarray(times_s) - segment.begin_s) / segment.step_s).astype(np.int64)
+            inside = (at >= 0) & (at < segment.force_n.shape[1])
+            found[inside] += segment.force_n[:, at[inside]].sum(axis=0)
+        return found
+
+    def force_peak(self, begin_s: Array, end_s: Array) -> Array:
+        """Largest contact force (t,), N, between ``begin_s`` and ``end_s`` (t,)."""
+        found = np.zeros(len(begin_s))
+        for segment in self.segments:
+            if segment.force_n is None:
+                continue
+            edges = segment.begin_s + segment.step_s * np.arange(segment.force_n.shape[1] + 1)
+            total = segment.force_n.max(axis=0)
+            touched = np.flatnonzero((np.asarray(begin_s) < edges[-1]) & (np.asarray(end_s) > edges[0]))
+            for at in touched:
+                meets = (edges[:-1] < end_s[at]) & (edges[1:] > begin_s[at])
+                found[at] = max(found[at], float(np.max(total[meets], initial=0.0)))
+        return found
+
+
+def _twist(segment: Segment, tensor: Array) -> Array:
+    # World angular acceleration (c, 3) of unit forces, in the frame frozen at the segment's begin.
+    assert segment.rigid is not None  # noqa: S101
+    assert segment.axes is not None  # noqa: S101
+    assert segment.arms_m is not None  # noqa: S101
+    turn = matrix(segment.rigid.turn)
+    inverse = turn @ np.linalg.inv(tensor) @ turn.T
+    return np.asarray(np.cross(segment.arms_m, segment.axes) @ inverse.T)
+
+
+def _pushed(segment: Segment, times_s: Array) -> Array:
+    force = segment.force_n
+    assert force is not None  # noqa: S101 (contact segments only)
+    h, steps = segment.step_s, force.shape[1]
+    total = np.concatenate((np.zeros((len(force), 1)), np.cumsum(force, axis=1) * h), axis=1)
+    since = np.clip(np.asarray(times_s) - segment.begin_s, 0.0, h * steps)
+    at = np.minimum((since / h).astype(np.int64), steps - 1)
+    return np.asarray(total[:, at] + force[:, at] * (since - at * h))
