@@ -127,7 +127,8 @@ def _solve(body: Body) -> ModeSet:
         key=body.key,
         omega=omega,
         shape=np.asarray(forms.basis @ vector),
-        rigid=np.asarray(forms.basis @ _signed(found.rigid)),
+        # A held body rings but does not move as a whole.
+        rigid=np.asarray(forms.basis @ _signed(found.rigid[:, :0] if body.held else found.rigid)),
         decay=decays(forms, body.loss, vector, omega),
         residual=found.residual[:keep],
         heard=int(np.searchsorted(omega, 2.0 * np.pi * body.bands.heard_hz, side="right")),

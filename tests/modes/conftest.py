@@ -31,6 +31,7 @@ class MatrixBody:
     key: str = "post-1"
     family: str = "line"
     free: bool = False
+    held: bool = False
     bands: Bands = field(default_factory=Bands)
     loss: tuple[tuple[float, float], ...] = ((1000.0, 0.0),)
     warnings: tuple[str, ...] = ()
@@ -53,6 +54,7 @@ class MatrixBody:
             mass=sp.csr_matrix(self.mass),
             basis=sp.csr_matrix(sp.identity(size) if self.basis is None else self.basis),
             cords=self.cords,
+            springs=None,
             damper_rows=sp.csr_matrix((0, size)) if self.damper_rows is None else self.damper_rows,
             damper_ns_m=self.damper_ns_m,
             heat=self.heat,

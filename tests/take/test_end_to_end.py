@@ -122,9 +122,19 @@ def remade(scene, store):
         damped = np.sqrt(track.modes.omega[:heard, None] ** 2 - decay**2)
         small = 1e-7
         rate = (track.modal(emitted + small)[:heard] - track.modal(emitted - small)[:heard]) / (2.0 * small)
-        place, turn = track.pose(np.zeros(1))
-        weights = transfer.weights(in_body(mic, place[0], turn[0], track), distance)[:heard]
-        out += np.real(weights @ ((1.0 + 1j * decay / damped) * rate))
+        # A free body turns after it is struck: where the microphone stands is looked up every 2 ms.
+        knots = np.arange(emitted[0], emitted[-1] + 4e-3, 2e-3)
+        places, turns = track.pose(knots)
+        weights = np.array(
+            [
+                transfer.weights(in_body(mic, place, turn, track), float(np.linalg.norm(mic - place)))[:heard]
+                for place, turn in zip(places, turns, strict=True)
+            ]
+        )
+        at = np.clip(((emitted - knots[0]) / 2e-3).astype(int), 0, len(knots) - 2)
+        share = ((emitted - knots[at]) / 2e-3)[:, None]
+        between = (1.0 - share) * weights[at] + share * weights[at + 1]
+        out += np.real(np.sum(between.T * ((1.0 + 1j * decay / damped) * rate), axis=0))
     return out
 
 

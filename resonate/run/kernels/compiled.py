@@ -1,21 +1,22 @@
-"""The one door to the compiler, typed."""
+"""One typed way to compile a loop."""
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, TypeVar
+from typing import TYPE_CHECKING, TypeVar, cast
 
 import numba
 
 if TYPE_CHECKING:
     from collections.abc import Callable
-    from typing import Any
 
-    Kernel = TypeVar("Kernel", bound=Callable[..., Any])
+    Loop = TypeVar("Loop", bound=Callable[..., object])
 else:
-    Kernel = TypeVar("Kernel")
+    Loop = TypeVar("Loop")
 
 
-def compiled(kernel: Kernel) -> Kernel:
-    """Compile a loop on first use and keep the machine code on disk."""
-    fast: Kernel = numba.njit(cache=True, error_model="numpy")(kernel)
-    return fast
+def compiled(loop: Loop) -> Loop:
+    """Compile a loop once and keep it on disk.
+
+    No fast math and no threads: the order of operations is fixed, so that a run repeats bit by bit.
+    """
+    return cast("Loop", numba.njit(cache=True)(loop))
