@@ -16,7 +16,7 @@ from resonate.run.record import Ledger, Record, RigidState
 from resonate.run.track import BodyTrack
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Callable, Sequence
 
     from numpy.typing import NDArray
 
@@ -71,7 +71,7 @@ def run(
             tracks.append(_track(spec, subject, course))
             events.extend(course.events)
             ledger = ledger.plus(course.ledger)
-            warnings.extend(beyond_linear(tracks[-1], blows))
+            warnings.extend(beyond_linear(tracks[-1], body, blows))
         if faults:
             raise RunError(faults=tuple(faults))
         ordered = tuple(sorted(events, key=lambda event: (event.begin_s, event.strike)))
@@ -120,7 +120,7 @@ def _blows(
     return blows
 
 
-def _in_world(spec: BodySpec, body: Body):  # type: ignore[no-untyped-def]  # noqa: ANN202
+def _in_world(spec: BodySpec, body: Body) -> Callable[[Array, RigidState | None], Array]:
     def place(point_m: Array, rigid: RigidState | None) -> Array:
         if rigid is None:
             return np.asarray(np.array(spec.place_m) + matrix(np.array(spec.turn)) @ point_m)

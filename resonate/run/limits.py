@@ -9,6 +9,7 @@ import numpy as np
 if TYPE_CHECKING:
     from collections.abc import Sequence
 
+    from resonate.body.body import Body
     from resonate.run.blow import Blow
     from resonate.run.track import BodyTrack
 
@@ -17,19 +18,37 @@ DEFLECTION = 0.3
 # Turning faster than this share of the first mode splits and shifts it.
 SPIN = 0.02
 _LOOKS = 256
+_POINTS = 400
 
 
-def beyond_linear(track: BodyTrack, blows: Sequence[Blow]) -> tuple[str, ...]:
+def _bent(track: BodyTrack, body: Body, blow: Blow) -> float:
+    """Largest bending, m, soon after a blow: what is left of the motion when the body's sway is taken off."""
+    modes = track.modes
+    times = blow.begin_s + np.linspace(0.0, 2.0 / float(modes.frequency_hz[0]), _LOOKS)
+    swing = np.sqrt(modes.omega**2 - modes.decay.total**2)
+    q = track.modal(times).imag / swing[:, None]
+    moved = np.abs(blow.row[: modes.count] @ q)
+    if float(moved.max()) <= DEFLECTION * blow.thickness_m:
+        return 0.0
+    points = body.surface.points_m
+    points = points[:: max(1, len(points) // _POINTS)]
+    field = np.asarray(body.probe(points) @ (modes.shape @ q[:, int(np.argmax(moved))]))
+    arms = points - body.inertia.centre_m
+    # Small rigid motions of the points: three shifts, three turns.
+    turns = [np.cross(axis, arms) for axis in np.eye(3)]
+    sway = np.stack([np.broadcast_to(axis, arms.shape) for axis in np.eye(3)] + turns, axis=2).reshape(-1, 6)
+    left = field - sway @ np.linalg.lstsq(sway, field, rcond=None)[0]
+    return float(np.linalg.norm(left.reshape(-1, 3), axis=1).max())
+
+
+def beyond_linear(track: BodyTrack, body: Body, blows: Sequence[Blow]) -> tuple[str, ...]:
     """Warnings about deflection and spin."""
     notes = []
     modes = track.modes
     if not modes.count:
         return ()
     for blow in blows:
-        times = blow.begin_s + np.linspace(0.0, 2.0 / float(modes.frequency_hz[0]), _LOOKS)
-        swing = np.sqrt(modes.omega**2 - modes.decay.total**2)
-        moved = blow.row[: modes.count] @ (track.modal(times).imag / swing[:, None])
-        most = float(np.abs(moved).max())
+        most = _bent(track, body, blow)
         if most > DEFLECTION * blow.thickness_m:
             notes.append(
                 f"body {track.name!r}: strike[{blow.strike}] bends it by {1e3 * most:.3g} mm, "

@@ -1,0 +1,5 @@
+"""``python -m resonate``."""
+
+from resonate.cli import main
+
+main()

@@ -1,0 +1,78 @@
+"""A commented scene to start from."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from resonate.errors import SceneError
+
+STARTER = """\
+# A scene for resonate. Bare numbers are SI; text may carry a unit: "3 mm", "2.5 m/s", "20 degC".
+# Right-handed, metres, y up. Every key is described in README.md.
+title = "{title}"
+
+[take]
+length = "2 s"                 # what is delivered, without handles
+seed = 1                       # dither; the same seed gives the same bytes
+
+[picture]
+rate = 24                      # 24, 25, 30, 48, 50, 60, "24000/1001", "30000/1001 drop", ...
+start = "01:00:00:00"          # timecode of the frame after the handles, or a frame number
+handles = 8                    # frames before and after
+
+[sound]
+rate = "48 kHz"
+format = "24-bit"
+level = {{ peak = "-6 dB" }}     # or "physical": full_scale is then the pressure of 0 dBFS
+
+[[body]]
+name = "plank"
+shape = "bar"                  # bar, tube, string, membrane, plate
+length = "320 mm"
+width = "38 mm"
+height = "14 mm"
+material = "rosewood"          # see: resonate presets materials
+place = [0, 1, 0]              # where its left end is, in the world
+# Two soft feet near the nodes of the first mode.
+support = [
+  {{ where = {{ point = ["72 mm", "-7 mm", 0] }}, hold = {{ spring = "2 kN/m", damper = "0.4 N s/m" }} }},
+  {{ where = {{ point = ["248 mm", "-7 mm", 0] }}, hold = {{ spring = "2 kN/m", damper = "0.4 N s/m" }} }},
+]
+
+[[strike]]
+body = "plank"
+time = "0.5 s"                 # first touch; frames and timecode work too: "12 f", "01:00:00:12"
+spot = {{ fraction = [0.45, 0.5] }}
+striker = "wooden mallet"      # see: resonate presets strikers
+speed = "1.5 m/s"
+
+[[mic]]
+name = "near"
+place = ["160 mm", "1.6 m", "0.5 m"]
+"""
+
+
+def write_starter(name: Path) -> Path:
+    """Write the starter as ``name`` (``.toml`` is added) and return its path.
+
+    Raises
+    ------
+    SceneError
+        If the file exists or cannot be written.
+    """
+    path = name if name.suffix == ".toml" else name.with_name(name.name + ".toml")
+    title = path.stem.replace("\\", " ").replace('"', "'").strip() or "take"
+    try:
+        with path.open("x", encoding="utf-8", newline="\n") as file:
+            file.write(STARTER.format(title=title))
+    except FileExistsError:
+        raise SceneError(
+            what="a file of this name exists and is kept", where=str(path), fix="choose another name"
+        ) from None
+    except OSError as error:
+        raise SceneError(
+            what=f"cannot be written: {error.strerror}",
+            where=str(path),
+            fix="choose a folder that exists and may be written to",
+        ) from None
+    return path

@@ -1,0 +1,109 @@
+"""Listen to a take or a scene: quiet at first, peaks limited.
+
+The start level and the ceiling follow common practice for auditioning impulses on headphones; what is safe for a
+listener depends on the equipment, and local rules on noise come first.
+"""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.errors import TakeError
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+    from pathlib import Path
+    from types import ModuleType
+
+    from numpy.typing import NDArray
+
+    Array = NDArray[np.float64]
+
+#: Loudest sample that leaves for the device, dBFS, before ``gain_db``.
+START_DB = -24.0
+#: Nothing ever leaves above this, whatever the gain, dBFS.
+CEILING_DB = -12.0
+_RAMP_S = 0.03
+_STEREO = 2
+
+
+def guarded(samples: Array, rate_hz: int, *, gain_db: float) -> Array:
+    """Samples (n, c) brought to the start level, then softly kept under the ceiling.
+
+    Parameters
+    ----------
+    samples : Array
+        (n, c) of any scale.
+    rate_hz : int
+        Sample rate.
+    gain_db : float
+        Louder than the start level.
+
+    Returns
+    -------
+    Array
+        (n, at most 2) float, at most ``CEILING_DB``; the first 30 ms fade in.
+    """
+    ceiling = 10.0 ** (CEILING_DB / 20.0)
+    peak = float(np.max(np.abs(samples), initial=0.0))
+    level = 10.0 ** ((START_DB + gain_db) / 20.0) / peak if peak > 0.0 else 0.0
+    quiet = samples[:, :_STEREO] * level
+    ramp = np.minimum(1.0, np.arange(len(quiet)) / (_RAMP_S * rate_hz))
+    return np.asarray(ceiling * np.tanh(quiet * ramp[:, None] / ceiling))
+
+
+def _device() -> ModuleType:
+    try:
+        import sounddevice
+    except OSError as error:
+        raise TakeError(
+            what=f"no sound system: {error}",
+            where="play",
+            fix="install PortAudio (Debian and Ubuntu: apt install libportaudio2; Fedora: dnf install portaudio), "
+            "or open the WAV of a take in any player",
+        ) from None
+    module: ModuleType = sounddevice
+    return module
+
+
+def _samples(path: Path, progress: Callable[[str], None]) -> tuple[Array, int]:
+    if path.is_dir():
+        import soundfile
+
+        wave = path / f"{path.name}.wav"
+        if not wave.exists():
+            raise TakeError(what="the take holds no WAV", where=str(path), fix='write one with files = ["wav", ...]')
+        samples, rate = soundfile.read(wave, always_2d=True, dtype="float64")
+        return samples, int(rate)
+    from resonate.modes.store import default_store
+    from resonate.scene.read import read_scene
+    from resonate.sound.render import render
+    from resonate.take.make import run_scene, transfers_of
+
+    scene = read_scene(path)
+    ran = run_scene(scene, store=default_store(), progress=progress)
+    sound = render(ran.record, transfers_of(scene, ran), scene)
+    return sound.pressure_pa, int(sound.rate_hz)
+
+
+def play_path(path: Path, *, gain_db: float, progress: Callable[[str], None]) -> None:
+    """Play a take, or run a scene and play it without writing anything.
+
+    Raises
+    ------
+    TakeError
+        If there is no sound system, no device, or nothing to play.
+    """
+    device = _device()
+    samples, rate_hz = _samples(path, progress)
+    progress("playing")
+    try:
+        device.play(guarded(samples, rate_hz, gain_db=gain_db), rate_hz, blocking=True)
+    except device.PortAudioError as error:
+        raise TakeError(
+            what=f"no sound device takes the sound: {error}",
+            where="play",
+            fix="connect or choose an output device, or open the WAV of a take in any player",
+        ) from None
