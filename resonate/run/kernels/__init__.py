@@ -1,1 +1,1 @@
-"""The compiled loops of the run, each behind a checked and typed function."""
+"""Compiled loops: plain arrays in and out, no checks, a fixed order of operations (no fast-math)."""

@@ -1,22 +1,21 @@
-"""One typed way to compile a loop."""
+"""The one door to the compiler, typed."""
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, TypeVar, cast
+from typing import TYPE_CHECKING, TypeVar
 
 import numba
 
 if TYPE_CHECKING:
     from collections.abc import Callable
+    from typing import Any
 
-    Loop = TypeVar("Loop", bound=Callable[..., object])
+    Kernel = TypeVar("Kernel", bound=Callable[..., Any])
 else:
-    Loop = TypeVar("Loop")
+    Kernel = TypeVar("Kernel")
 
 
-def compiled(loop: Loop) -> Loop:
-    """Compile a loop once and keep it on disk.
-
-    No fast math and no threads: the order of operations is fixed, so that a run repeats bit by bit.
-    """
-    return cast("Loop", numba.njit(cache=True)(loop))
+def compiled(kernel: Kernel) -> Kernel:
+    """Compile a loop on first use and keep the machine code on disk."""
+    fast: Kernel = numba.njit(cache=True, error_model="numpy")(kernel)
+    return fast
