@@ -181,7 +181,8 @@ def presets(kind: str | None, *, as_json: bool) -> None:
         return
     rows = preset_rows(kind)
     if as_json:
-        click.echo(json.dumps(dict(tables(kind)), indent=2, ensure_ascii=False))  # type: ignore[arg-type]
+        known = tables("materials" if kind == "materials" else "strikers")
+        click.echo(json.dumps({preset.name: dict(known[preset.name]) for preset in list_presets(kind)}, indent=2))
         return
     table = Table(*rows.headings, title=f"{kind} ({len(rows.rows)})")
     for row in rows.rows:

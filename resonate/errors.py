@@ -80,7 +80,7 @@ class TakeError(ResonateError):
     """A take cannot be written or read."""
 
 
-class CheckFault(ResonateError):
+class CheckFault(ResonateError):  # noqa: N818 (a fault found, not an error made)
     """A written take does not hold what it promises."""
 
     exit_code = 1

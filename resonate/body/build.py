@@ -35,7 +35,7 @@ def _up(spec: BodySpec) -> Array:
             [2 * (x * z - y * w), 2 * (y * z + x * w), 1 - 2 * (x * x + y * y)],
         ]
     )
-    return turn.T @ np.array([0.0, 1.0, 0.0])
+    return np.asarray(turn[1])
 
 
 def _key(spec: BodySpec, *, temperature_k: float, gravity_m_s2: float, mesh: tuple[int, ...]) -> str:

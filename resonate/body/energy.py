@@ -15,11 +15,17 @@ from scipy.sparse import coo_matrix, csr_matrix
 from scipy.sparse.csgraph import connected_components
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from numpy.typing import NDArray
 
     from resonate.body.spectral import Grid, Quadrature
 
     Array = NDArray[np.float64]
+
+
+# Couplings below this are round-off.
+_ROUNDING = 1e-14
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +39,7 @@ class Strain:
     slopes: Array
 
     @classmethod
-    def of(cls, fields: int, dimension: int, *rows: dict[tuple[int, int | None], float]) -> Strain:
+    def of(cls, fields: int, dimension: int, *rows: Mapping[tuple[int, int | None], float]) -> Strain:
         """Build from one dictionary a strain: (field, direction or None for the field itself) -> gain."""
         value = np.zeros((len(rows), fields))
         slope = np.zeros((len(rows), fields, dimension))
@@ -44,6 +50,11 @@ class Strain:
                 else:
                     slope[number, field, direction] = gain
         return cls(value, slope)
+
+    @classmethod
+    def still(cls, fields: int, dimension: int) -> Strain:
+        """Give each field itself: with velocities, what is moved."""
+        return cls(np.eye(fields), np.zeros((fields, fields, dimension)))
 
 
 def strain_matrix(strain: Strain, at: Quadrature) -> Array:
@@ -112,7 +123,8 @@ def _element_blocks(at: Quadrature, strain: Strain, law: Array) -> Array:
     stressed = np.matmul(weighted, local)
     stacked = (elements, points * count, width)
     blocks = local.reshape(stacked).transpose(0, 2, 1) @ stressed.reshape(stacked)
-    return 0.5 * (blocks + blocks.transpose(0, 2, 1))
+    symmetric: Array = 0.5 * (blocks + blocks.transpose(0, 2, 1))
+    return symmetric
 
 
 def sample(grid: Grid, at: Quadrature, strain: Strain, gain: Array) -> csr_matrix:
@@ -134,7 +146,7 @@ def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
     Constraints that share no freedom are treated apart, so that the basis stays sparse. In each group as many
     freedoms as there are independent constraints are expressed by the others.
     """
-    from scipy.linalg import qr, solve_triangular  # noqa: PLC0415
+    from scipy.linalg import qr, solve_triangular
 
     if rows.shape[0] == 0:
         return csr_matrix((np.ones(size), (np.arange(size), np.arange(size))), shape=(size, size))
@@ -156,7 +168,7 @@ def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
         dependent.extend(chosen.tolist())
         if len(rest):
             link = -solve_triangular(upper[:rank, :rank], upper[:rank, rank:])
-            link[np.abs(link) < 1e-14] = 0.0
+            link[np.abs(link) < _ROUNDING] = 0.0
             entries.append((np.repeat(chosen, len(rest)), np.tile(rest, rank), link.ravel()))
     free = np.setdiff1d(np.arange(size), np.array(dependent, dtype=np.int64))
     place = np.full(size, -1, dtype=np.int64)

@@ -20,9 +20,8 @@ from resonate.body.energy import Strain, assemble, sample
 from resonate.body.flat_layout import SHEAR, FlatLayout
 from resonate.body.flat_spot import flat_spot
 from resonate.body.heat import Heat
-from resonate.body.outline import Edge
 from resonate.body.reduce import reduced
-from resonate.body.spectral import Grid, basis
+from resonate.body.spectral import ROUNDING, Grid, basis
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
 from resonate.scene.model import BoxPlace, MembraneShape, NamedPlace
@@ -30,6 +29,7 @@ from resonate.scene.model import BoxPlace, MembraneShape, NamedPlace
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from resonate.body.outline import Edge
     from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
@@ -190,7 +190,7 @@ class FlatBody:
         points = np.atleast_2d(points_m)
         element, local, _ = self.grid.locate(points[:, [0, 2]])
         value, _ = basis(self.grid.order, local)
-        value = np.where(np.abs(value) < 1e-13, 0.0, value)
+        value = np.where(np.abs(value) < ROUNDING, 0.0, value)
         half = 0.5 * self.thickness_m
         y = np.clip(points[:, 1], -half, half)
         gain = np.zeros((len(points), 6, self.fields))
@@ -279,7 +279,7 @@ class FlatBody:
         law = _blocks(thick * plane, thick**3 / 12.0 * plane, slide)
         strain = Strain.of(_PLATE, 2, *_STRETCH, *_CURVE, *_SLIDE)
         heavy = density * np.diag([thick, thick, thick, thick**3 / 12.0, thick**3 / 12.0])
-        moves = Strain.of(_PLATE, 2, *({(field, None): 1.0} for field in range(_PLATE)))
+        moves = Strain.still(_PLATE, 2)
         stiffness = assemble(self.grid, at, strain, law)
         mass = assemble(self.grid, at, moves, heavy)
         return reduced(stiffness, mass, self.supports, self._heat())
@@ -293,7 +293,7 @@ class FlatBody:
         # What heats is the sum of the two bending stresses; in cylindrical bending this is Zener's strength
         # times (1 + nu)/(1 - nu), as for waves in plates (Chaigne & Lambourg 2001).
         first, second = float(plane[0, 0] + plane[0, 1]), float(plane[1, 1] + plane[0, 1])
-        mixed = {(4, 0): -first, (3, 1): second}
+        mixed: dict[tuple[int, int | None], float] = {(4, 0): -first, (3, 1): second}
         gain = np.sqrt(heat.per_pascal * thick**3 / 12.0 * at.weight)[..., None]
         operator = sample(self.grid, at, Strain.of(_PLATE, 2, mixed), gain)
         relax = thick**2 / (np.pi**2 * heat.diffusivity_m2_s)

@@ -8,7 +8,6 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from resonate.body.outline import Edge, area, cut, edges
-from resonate.body.spectral import Grid
 from resonate.body.waves import bending_wavenumber, top_frequency
 from resonate.errors import BodyError
 from resonate.scene.model import MembraneShape, PlateShape
@@ -16,6 +15,7 @@ from resonate.scene.model import MembraneShape, PlateShape
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from resonate.body.spectral import Grid
     from resonate.scene.model import BodySpec, MaterialSpec, Outline
 
     Array = NDArray[np.float64]

@@ -45,7 +45,7 @@ def _centre(layout: FlatLayout, middle: Array) -> Array:
         return middle
     # The centroid of an angular outline may lie outside: take the nearest point of the plate.
     nodes = layout.grid.nodes_m
-    return nodes[int(np.argmin(np.linalg.norm(nodes - middle, axis=1)))]
+    return np.asarray(nodes[int(np.argmin(np.linalg.norm(nodes - middle, axis=1)))])
 
 
 def _named(layout: FlatLayout, name: str, middle: Array) -> Array:
@@ -59,7 +59,7 @@ def _named(layout: FlatLayout, name: str, middle: Array) -> Array:
     nodes = layout.grid.nodes_m
     level = np.abs(nodes[:, 1] - centre[1]) <= 0.25 * (high[1] - low[1])
     rim = nodes[level][int(np.argmax(nodes[level, 0]))]
-    return rim + _IN * (centre - rim)
+    return np.asarray(rim + _IN * (centre - rim))
 
 
 def _upper(spec: BodySpec, layout: FlatLayout, place: Array, side: float) -> SurfaceSpot:
@@ -104,7 +104,7 @@ def flat_spot(spec: BodySpec, layout: FlatLayout, spot: SpotSpec, middle_m: Arra
 
 
 def _at(layout: FlatLayout, element: int, local: Array) -> Array:
-    from resonate.body.spectral import basis  # noqa: PLC0415
+    from resonate.body.spectral import basis
 
     value, _ = basis(layout.grid.order, local)
     return np.asarray(value[0] @ layout.grid.nodes_m[layout.grid.elements[element]])

@@ -12,16 +12,15 @@ from functools import cached_property
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
-from scipy.sparse import coo_matrix, csr_matrix, vstack
+from scipy.sparse import coo_matrix, csr_matrix
 
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
 from resonate.body.display import join, lattice
 from resonate.body.energy import Strain, assemble, sample
 from resonate.body.heat import Heat
-from resonate.body.line_layout import Layout
 from resonate.body.line_spot import line_spot
 from resonate.body.reduce import reduced
-from resonate.body.spectral import Grid, basis
+from resonate.body.spectral import ROUNDING, Grid, basis
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
 from resonate.scene.model import BoxPlace, NamedPlace
@@ -29,13 +28,14 @@ from resonate.scene.model import BoxPlace, NamedPlace
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from resonate.body.line_layout import Layout
     from resonate.body.section import Section
     from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
 FIELDS = 6
-_MOVE = Strain.of(FIELDS, 1, *({(field, None): 1.0} for field in range(FIELDS)))
+_MOVE = Strain.still(FIELDS, 1)
 _STRAINS = Strain.of(
     FIELDS,
     1,
@@ -192,7 +192,7 @@ class LineBody:
         points = np.atleast_2d(points_m)
         element, local, _ = self.grid.locate(points[:, :1])
         value, _ = basis(self.grid.order, local)
-        value = np.where(np.abs(value) < 1e-13, 0.0, value)
+        value = np.where(np.abs(value) < ROUNDING, 0.0, value)
         section = self.layout.section_at(points[:, 0])
         y = np.clip(points[:, 1], -0.5 * section.height, 0.5 * section.height)
         z = np.clip(points[:, 2], -0.5 * section.width, 0.5 * section.width)
@@ -218,7 +218,7 @@ class LineBody:
         if self.layout.tension_n == 0.0:
             return np.zeros(0, dtype=np.int64)
         nodes = np.arange(len(self.grid.nodes_m))[:, None] * FIELDS
-        return (nodes + np.array([0, 3])).ravel()
+        return np.asarray((nodes + np.array([0, 3])).ravel(), dtype=np.int64)
 
     def select(self, hold: HoldSpec) -> Held:
         """Find the material points of one support."""

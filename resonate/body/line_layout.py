@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -95,7 +96,8 @@ def profile_at(rows: Array, fraction: Array) -> tuple[Array, Array]:
 def _profile_rows(shape: BarShape) -> Array:
     if shape.profile:
         return np.array(shape.profile)
-    return np.array([[0.0, shape.height_m or 0.0, shape.width_m or 0.0]] * 2) + np.array([[0, 0, 0], [1, 0, 0]])
+    ends = (shape.height_m or 0.0, shape.width_m or 0.0)
+    return np.array([[0.0, *ends], [1.0, *ends]])
 
 
 def _wavenumbers(layout: Layout, x_m: Array, hertz: float) -> Array:
@@ -171,7 +173,7 @@ def _breaks(spec: BodySpec, rows: Array, length: float) -> Array:
 
 def _counts(draft: Layout, breaks: Array, top_hz: float, name: str) -> tuple[list[int], tuple[str, ...]]:
     counts = []
-    for start, stop in zip(breaks, breaks[1:], strict=False):
+    for start, stop in pairwise(breaks):
         x = start + (np.arange(17) + 0.5) / 17 * (stop - start)
         waves = float(_wavenumbers(draft, x, top_hz).mean(axis=1).max()) * (stop - start) / (2.0 * np.pi)
         counts.append(max(1, int(np.ceil(waves * _NODES_PER_WAVE / ORDER))))

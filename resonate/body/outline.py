@@ -30,6 +30,8 @@ if TYPE_CHECKING:
 # Half side of the square core of a circle as a share of the radius, and how far its sides bulge.
 _CORE = 0.5
 _BULGE = 0.12
+# Least sine of the turn at a corner of a mapped quadrilateral.
+_BENT = 0.05
 # An element may be this share larger than asked before one more is laid.
 _SLACK = 0.25
 
@@ -105,7 +107,7 @@ def _bilinear(corners: Array) -> Map:
 
     def mapping(u: Array, v: Array) -> Array:
         u, v = u[..., None], v[..., None]
-        return (1 - u) * (1 - v) * a + u * (1 - v) * b + u * v * c + (1 - u) * v * d
+        return np.asarray((1 - u) * (1 - v) * a + u * (1 - v) * b + u * v * c + (1 - u) * v * d)
 
     return mapping
 
@@ -128,7 +130,7 @@ def _circle(radius: float, first: int, second: int, order: int) -> Array:
     blocks = [_patch(middle, first, first, order)]
     for quarter in range(4):
         turn = 0.5 * np.pi * quarter
-        cosine, sine = np.round(np.cos(turn)), np.round(np.sin(turn))
+        cosine, sine = float(np.round(np.cos(turn))), float(np.round(np.sin(turn)))
 
         def outer(u: Array, v: Array, cosine: float = cosine, sine: float = sine) -> Array:
             x0, z0 = side(v)
@@ -165,7 +167,8 @@ def _convex(corners: Array) -> bool:
     turn = ahead[:, 0] * np.roll(ahead[:, 1], -1) - ahead[:, 1] * np.roll(ahead[:, 0], -1)
     # A corner opened nearly straight would fold the map.
     lengths = np.linalg.norm(ahead, axis=1)
-    return bool(np.all(turn / (lengths * np.roll(lengths, -1)) > 0.05) or np.all(turn / lengths**2 < -0.05))
+    sine = turn / (lengths * np.roll(lengths, -1))
+    return bool(np.all(sine > _BENT) or np.all(sine < -_BENT))
 
 
 def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
@@ -252,4 +255,4 @@ def _share(run: Array, *, closed: bool) -> Array:
         last = 2.0 * np.pi - (run[order[-1]] - run[order[0]])
         weight[order[0]] += 0.5 * last
         weight[order[-1]] += 0.5 * last
-    return weight / weight.sum()
+    return np.asarray(weight / weight.sum())

@@ -112,14 +112,15 @@ def _interior(corners: Array, rim: Array, spacing: float) -> Array:
 
 
 def _inside(corners: Array, points: Array) -> IntArray:
-    from scipy.spatial import Delaunay  # noqa: PLC0415 (keeps the start of the program light)
+    from scipy.spatial import Delaunay
 
     triangles = Delaunay(points).simplices.astype(np.int64)
     a, b, c = (points[triangles[:, k]] for k in range(3))
     doubled = (b[:, 0] - a[:, 0]) * (c[:, 1] - a[:, 1]) - (b[:, 1] - a[:, 1]) * (c[:, 0] - a[:, 0])
     size = float(np.ptp(points, axis=0).max())
     solid = np.abs(doubled) > 1e-10 * size**2
-    return triangles[solid & _even_odd(corners, (a + b + c) / 3.0)]
+    kept: IntArray = triangles[solid & _even_odd(corners, (a + b + c) / 3.0)]
+    return kept
 
 
 def _keeps(triangles: IntArray, rim: int) -> bool:

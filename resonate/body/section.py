@@ -58,7 +58,8 @@ def torsion_constant(width: Array, height: Array) -> Array:
     for odd in range(1, 2 * _TERMS, 2):
         with np.errstate(divide="ignore", over="ignore"):
             total += np.tanh(0.5 * odd * np.pi / np.where(ratio > 0.0, ratio, 1e-300)) / odd**5
-    return long * short**3 * (1.0 / 3.0 - 64.0 / np.pi**5 * ratio * total)
+    constant: Array = long * short**3 * (1.0 / 3.0 - 64.0 / np.pi**5 * ratio * total)
+    return constant
 
 
 def rectangle(width: Array, height: Array, *, shear_up_pa: float, shear_across_pa: float, poisson: float) -> Section:

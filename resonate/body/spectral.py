@@ -26,6 +26,8 @@ if TYPE_CHECKING:
 
 # Two nodes closer than this fraction of the body's size are one node.
 _WELD = 1e-9
+# Values of nodal functions below this are round-off.
+ROUNDING = 1e-13
 
 
 @cache
@@ -34,20 +36,20 @@ def lobatto(order: int) -> Array:
     legendre = np.polynomial.legendre.Legendre.basis(order).deriv()
     inner = np.sort(legendre.roots().real)
     nodes = np.concatenate(([-1.0], inner, [1.0]))
-    return 0.5 * (nodes - nodes[::-1])
+    return np.asarray(0.5 * (nodes - nodes[::-1]), dtype=np.float64)
 
 
 @cache
 def gauss(count: int) -> tuple[Array, Array]:
     """Gauss-Legendre points and weights (count,) on [-1, 1]."""
     points, weights = np.polynomial.legendre.leggauss(count)
-    return points, weights
+    return np.asarray(points, dtype=np.float64), np.asarray(weights, dtype=np.float64)
 
 
 @cache
 def _to_nodal(order: int) -> Array:
     nodes = lobatto(order)
-    return np.linalg.inv(np.polynomial.legendre.legvander(nodes, order))
+    return np.asarray(np.linalg.inv(np.polynomial.legendre.legvander(nodes, order)), dtype=np.float64)
 
 
 def lagrange(order: int, points: Array) -> tuple[Array, Array]:
@@ -110,7 +112,7 @@ class Grid:
     @property
     def dimension(self) -> int:
         """1 for lines, 2 for flat regions."""
-        return self.nodes_m.shape[1]
+        return int(self.nodes_m.shape[1])
 
     def quadrature(self) -> Quadrature:
         """Integrate exactly polynomials of twice the order (on unmapped elements)."""
@@ -180,7 +182,7 @@ def weld(places_m: Array, order: int) -> Grid:
     """Merge element nodes (e, k, 2) that coincide into one grid."""
     flat = places_m.reshape(-1, 2)
     size = float(np.ptp(flat, axis=0).max())
-    from scipy.spatial import cKDTree  # noqa: PLC0415  (keeps the start of the program light)
+    from scipy.spatial import cKDTree
 
     tree = cKDTree(flat)
     pairs = tree.query_pairs(_WELD * size * 1e2, output_type="ndarray")

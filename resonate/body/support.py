@@ -70,7 +70,7 @@ class Holdable(Protocol):
         """Freedoms that this shape never moves."""
 
 
-def _fixed_rows(kind: NamedHold | FixHold, held: Held, motion: csr_matrix, line: bool) -> list[csr_matrix]:
+def _fixed_rows(kind: NamedHold | FixHold, held: Held, motion: csr_matrix, *, line: bool) -> list[csr_matrix]:
     axes: tuple[str, ...]
     if isinstance(kind, FixHold):
         axes = kind.axes
@@ -127,7 +127,7 @@ def supports(
         moves = np.arange(count)[:, None] * 6 + np.arange(3)
         kind = hold.hold
         if isinstance(kind, NamedHold | FixHold):
-            fixed.extend(_fixed_rows(kind, held, motion, line))
+            fixed.extend(_fixed_rows(kind, held, motion, line=line))
         elif isinstance(kind, SpringHold):
             rows = motion[moves.ravel()]
             share = np.repeat(held.share, 3)

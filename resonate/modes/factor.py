@@ -90,7 +90,7 @@ def _superlu(matrix: csr_matrix) -> Factor:
 def _fast(matrix: csr_matrix) -> Factor | None:
     """Use the optional supernodal L D L' with pivoting inside each supernode, if it is installed."""
     try:
-        import rslab  # noqa: PLC0415  (an optional extra)
+        import rslab
     except ImportError:
         return None
     try:

@@ -99,7 +99,7 @@ class ModeSet:
             object.__setattr__(self, name, _frozen(getattr(self, name)))
         good = (
             self.omega.ndim == 1
-            and self.shape.ndim == 2
+            and np.shape(self.shape) == (len(self.shape), len(self.omega))
             and self.shape.shape[1] == len(self.omega)
             and len(self.decay.total) == len(self.omega)
             and bool(np.all(np.isfinite(self.omega)))
@@ -107,7 +107,7 @@ class ModeSet:
             and bool(np.all(np.diff(self.omega) >= 0.0))
             and bool(np.all(np.isfinite(self.shape)))
             and self.residual.shape == self.omega.shape
-            and self.rigid.ndim == 2
+            and np.shape(self.rigid) == (len(self.shape), np.size(self.rigid) // max(len(self.shape), 1))
             and len(self.rigid) == len(self.shape)
             and bool(np.all(np.isfinite(self.rigid)))
             and 0 <= self.heard <= len(self.omega)

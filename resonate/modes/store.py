@@ -164,7 +164,7 @@ def default_store() -> ModeStore:
     given = os.environ.get("RESONATE_CACHE", "")
     if given:
         return ModeStore(Path(given) / "modes")
-    from platformdirs import user_cache_path  # noqa: PLC0415 (only when nothing was set)
+    from platformdirs import user_cache_path
 
     return ModeStore(user_cache_path("resonate", appauthor=False) / "modes")
 

@@ -18,7 +18,8 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.body.body import Body
-    from resonate.run.record import BodyTrack, Event, Record
+    from resonate.run.record import Event, Record
+    from resonate.run.track import BodyTrack
     from resonate.scene.clock import Clock
     from resonate.scene.model import Scene, ShowSpec
 

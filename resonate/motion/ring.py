@@ -11,7 +11,8 @@ from resonate.motion.shutter import damped
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from resonate.run.record import BodyTrack, Segment
+    from resonate.run.record import Segment
+    from resonate.run.track import BodyTrack
 
     Array = NDArray[np.float64]
     ComplexArray = NDArray[np.complex128]

@@ -28,7 +28,7 @@ if TYPE_CHECKING:
 
     from resonate.body.body import Body
     from resonate.motion.visible import Kind, SurfaceShapes
-    from resonate.run.record import BodyTrack
+    from resonate.run.track import BodyTrack
     from resonate.scene.model import ShowSpec
 
     Array = NDArray[np.float64]

@@ -15,7 +15,8 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
-    from resonate.run.record import BodyTrack, Segment
+    from resonate.run.record import Segment
+    from resonate.run.track import BodyTrack
 
     Array = NDArray[np.float64]
     ComplexArray = NDArray[np.complex128]

@@ -23,6 +23,8 @@ if TYPE_CHECKING:
 
 # Seven points whose mean is exact for polynomials of degree 5 over a disc (Stroud 1971, S2 5-1).
 _RING = np.sqrt(2.0 / 3.0)
+# Cosine of the steepest direction that still presses on the surface, and of a normal along the body.
+_GRAZING, _END_FACE = 1e-6, 0.9
 _WEIGHTS = np.array([0.25] + 6 * [0.125])
 
 
@@ -69,17 +71,17 @@ def _axis(spec: StrikeSpec, spot: SurfaceSpot, to_body: Array, where: str) -> Ar
     if spec.direction is not None:
         axis = to_body @ np.array(spec.direction)
         axis = axis / np.linalg.norm(axis)
-        if float(axis @ inward) <= 1e-6:
+        if float(axis @ inward) <= _GRAZING:
             raise RunError(
                 what=f"direction {list(spec.direction)} points away from the surface at the spot",
                 where=where,
                 fix="turn it round, or leave it out to strike along the inward normal",
             )
-        return axis
+        return np.asarray(axis)
     if not spec.angle_rad:
         return inward
     # Leaning towards the body's +x, or +z on an end face.
-    lean = np.array([1.0, 0.0, 0.0]) if abs(inward[0]) < 0.9 else np.array([0.0, 0.0, 1.0])
+    lean = np.array([1.0, 0.0, 0.0]) if abs(inward[0]) < _END_FACE else np.array([0.0, 0.0, 1.0])
     lean = lean - (lean @ inward) * inward
     lean = lean / np.linalg.norm(lean)
     return np.asarray(np.cos(spec.angle_rad) * inward + np.sin(spec.angle_rad) * lean)

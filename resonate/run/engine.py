@@ -12,7 +12,7 @@ from resonate.run.blow import make_blow
 from resonate.run.course import Course, Subject, follow
 from resonate.run.flight import fly, matrix
 from resonate.run.limits import beyond_linear
-from resonate.run.record import Ledger, Record, RigidState
+from resonate.run.record import Event, Ledger, Record, RigidState
 from resonate.run.track import BodyTrack
 
 if TYPE_CHECKING:
@@ -59,7 +59,9 @@ def run(
     """
     with threadpool_limits(limits=1):
         begin_s, end_s = float(scene.clock.run_begin_s), float(scene.clock.end)
-        tracks, events, warnings = [], [], []
+        tracks: list[BodyTrack] = []
+        events: list[Event] = []
+        warnings: list[str] = []
         ledger = Ledger.empty()
         faults: list[Fault] = []
         for index, (spec, body, found) in enumerate(zip(scene.bodies, bodies, modes, strict=True)):
@@ -83,8 +85,8 @@ def _check_damping(body: Body, modes: ModeSet) -> None:
     if len(over):
         number = int(over[0])
         raise RunError(
-            what=f"mode {number + 1} at {modes.frequency_hz[number]:.4g} Hz dies at {modes.decay.total[number]:.4g} 1/s "
-            "and does not swing at all",
+            what=f"mode {number + 1} at {modes.frequency_hz[number]:.4g} Hz decays at "
+            f"{modes.decay.total[number]:.4g} 1/s and does not swing at all",
             where=f"body {body.name!r}",
             fix="use a weaker damper or a smaller loss factor",
         )

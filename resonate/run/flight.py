@@ -23,6 +23,8 @@ if TYPE_CHECKING:
 # Steps of the turning integrator: at most this long, and this angle.
 _STEP_S = 1e-3
 _STEP_RAD = 0.01
+# Below this the sine of a half angle is half the angle.
+_STILL_RAD = 1e-9
 
 
 def matrix(turn: Array) -> Array:
@@ -40,7 +42,8 @@ def turned(turn: Array, angle: Array) -> Array:
     """Quaternions xyzw after small world rotations ``angle`` (..., 3), rad."""
     size = np.linalg.norm(angle, axis=-1, keepdims=True)
     half = 0.5 * size
-    share = np.where(size > 1e-12, np.sin(half) / np.where(size > 1e-12, size, 1.0), 0.5)
+    seen = size > _STILL_RAD
+    share = np.where(seen, np.sin(half) / np.where(seen, size, 1.0), 0.5)
     ax, ay, az = np.moveaxis(angle * share, -1, 0)
     aw = np.cos(half)[..., 0]
     x, y, z, w = np.moveaxis(np.broadcast_to(turn, (*angle.shape[:-1], 4)), -1, 0)
@@ -53,7 +56,7 @@ def turned(turn: Array, angle: Array) -> Array:
         ),
         axis=-1,
     )
-    return product / np.linalg.norm(product, axis=-1, keepdims=True)
+    return np.asarray(product / np.linalg.norm(product, axis=-1, keepdims=True))
 
 
 def fly(state: RigidState, since_s: Array, *, tensor: Array, gravity: Array) -> tuple[Array, Array, Array, Array]:
@@ -72,9 +75,13 @@ def fly(state: RigidState, since_s: Array, *, tensor: Array, gravity: Array) -> 
     step = min(_STEP_S, _STEP_RAD / size)
     body_spin = matrix(state.turn).T @ state.spin_rad_s
     found_turn, found_spin = turn_free(
-        np.ascontiguousarray(state.turn), body_spin, np.ascontiguousarray(tensor), np.linalg.inv(tensor),
-        np.ascontiguousarray(np.asarray(since_s)[order]), step,
-    )  # fmt: skip
+        np.ascontiguousarray(state.turn),
+        body_spin,
+        np.ascontiguousarray(tensor),
+        np.asarray(np.linalg.inv(tensor), dtype=np.float64),
+        np.ascontiguousarray(np.asarray(since_s)[order]),
+        step,
+    )
     turn[order] = found_turn
     spin[order] = np.einsum("tij,tj->ti", matrix(found_turn), found_spin)
     return place, turn, speed, spin

@@ -84,7 +84,7 @@ def pulse(stiffness_n: float, mass_kg: float, speed_m_s: float) -> Pulse:
 
 
 def loss(restitution: float, reference_speed_m_s: float) -> float:
-    """mu of F = K delta^p (1 + mu delta'), s/m, that gives ``restitution`` at the reference speed.
+    """Loss constant mu of F = K delta^p (1 + mu delta'), s/m, that gives ``restitution`` at the reference speed.
 
     Notes
     -----

@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 
 # Coefficients keep this many bits, so that the last bit of a library's sine does not seed chaos.
 _BITS = 40
+# Angles a step below which series are better than sines, and frequencies that are none.
+_SMALL, _SLOW = 1e-4, 1e-5
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,7 +64,7 @@ def coefficients(omega: Array, decay: Array, step_s: float, *, rounded: bool = T
     square = omega**2 - decay**2
     root = np.sqrt(np.abs(square))
     angle = root * h
-    small = angle < 1e-4
+    small = angle < _SMALL
     safe = np.where(root > 0.0, root, 1.0)
     even = 1.0 - np.sign(square) * angle**2 / 6.0 + angle**4 / 120.0
     with np.errstate(over="ignore"):
@@ -72,7 +74,7 @@ def coefficients(omega: Array, decay: Array, step_s: float, *, rounded: bool = T
         missing = -np.expm1(-decay * h) + 2.0 * shrink * half - shrink * decay * sine
     stiff = omega > 0.0
     series = 0.5 * h**2 * (1.0 - 2.0 * decay * h / 3.0)
-    c = np.where(stiff & (omega * h > 1e-5), missing / np.where(stiff, omega, 1.0) ** 2, series)
+    c = np.where(stiff & (omega * h > _SLOW), missing / np.where(stiff, omega, 1.0) ** 2, series)
     drag = np.where(decay > 0.0, -np.expm1(-2.0 * decay * h) / np.where(decay > 0.0, 2.0 * decay, 1.0), h)
     # Without stiffness the mode only coasts against its drag.
     found = (
@@ -102,7 +104,7 @@ def from_state(z: ComplexArray, omega: Array, decay: Array) -> tuple[Array, Arra
 
 
 def exponents(omega: Array, decay: Array) -> ComplexArray:
-    """lambda = -a + j sqrt(omega^2 - a^2), (m,)."""
+    """Exponents lambda = -a + j sqrt(omega^2 - a^2), (m,)."""
     return -decay + 1j * np.sqrt(omega**2 - decay**2)
 
 

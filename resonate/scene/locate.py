@@ -10,9 +10,10 @@ import json
 import re
 import tomllib
 from dataclasses import dataclass, field
-from typing import Final
+from typing import TYPE_CHECKING, Final
 
-from resonate.scene.refused import Path
+if TYPE_CHECKING:
+    from resonate.scene.refused import Path
 
 _BLANK: Final = re.compile(r"(?:[ \t\r\n]+|#[^\n]*)*")
 _SPACE: Final = re.compile(r"[ \t]*")

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 import tomllib
 from pathlib import Path as FilePath
-from typing import Any, Final
+from typing import TYPE_CHECKING, Any, Final
 
 from resonate.errors import SceneError
 from resonate.scene.bodies import default_spot
@@ -17,12 +17,14 @@ from resonate.scene.later import refuse_keys, refuse_tables
 from resonate.scene.locate import Locator
 from resonate.scene.matter import StrikerSpec
 from resonate.scene.model import BodySpec, Scene
-from resonate.scene.moments import Picture
 from resonate.scene.names import choose, listing
 from resonate.scene.refused import Path, shown
 from resonate.scene.resolve import default_microphone, digest_of
 from resonate.scene.settings import LevelSpec, PictureSpec, SoundSpec, TakeSpec, WorldSpec
 from resonate.scene.spell import ANY_SHAPE, read_body, read_striker
+
+if TYPE_CHECKING:
+    from resonate.scene.moments import Picture
 
 _TOP: Final = ("title", "take", "picture", "sound", "world", "body", "strike", "mic")
 # Stands in for a refused striker, so that the rest of the strike is still checked.

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
-from pathlib import Path
+from typing import TYPE_CHECKING
 
 from resonate.errors import SceneError
+
+if TYPE_CHECKING:
+    from pathlib import Path
 
 STARTER = """\
 # A scene for resonate. Bare numbers are SI; text may carry a unit: "3 mm", "2.5 m/s", "20 degC".

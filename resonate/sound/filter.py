@@ -66,7 +66,7 @@ class BandLimit:
 
     def kernel(self, offset_s: Array) -> Array:
         """Evaluate the kernel g, 1/s, at any offsets."""
-        from scipy.special import i0  # noqa: PLC0415 (heavy)
+        from scipy.special import i0
 
         cut = self.pass_hz + self.stop_hz
         inside = 1.0 - (offset_s / self.half_s) ** 2
@@ -75,7 +75,7 @@ class BandLimit:
 
     def slope(self, offset_s: Array) -> Array:
         """Evaluate the derivative of the kernel, 1/s^2, at any offsets."""
-        from scipy.special import i0, i1  # noqa: PLC0415 (heavy)
+        from scipy.special import i0, i1
 
         cut = self.pass_hz + self.stop_hz
         inside = 1.0 - (offset_s / self.half_s) ** 2

@@ -19,7 +19,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.field.transfer import Transfer
-    from resonate.run.record import BodyTrack
+    from resonate.run.track import BodyTrack
     from resonate.scene.clock import Clock
     from resonate.scene.model import Scene
 

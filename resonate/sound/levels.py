@@ -160,7 +160,7 @@ def weighted_energy(samples: Array, rate_hz: float) -> Array:
     these coefficients at 48 kHz and the same response at any rate are those of De Man,
     Evaluation of implementations of the EBU R128 loudness measurement, AES 145 (2018).
     """
-    from scipy.signal import sosfilt  # noqa: PLC0415 (heavy)
+    from scipy.signal import sosfilt
 
     sections = k_weighting(rate_hz)
     energy = np.zeros(len(samples) + 1)

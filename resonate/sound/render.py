@@ -21,7 +21,8 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.field.transfer import Transfer
-    from resonate.run.record import BodyTrack, Record, Segment
+    from resonate.run.record import Record, Segment
+    from resonate.run.track import BodyTrack
     from resonate.scene.clock import Clock
     from resonate.scene.model import Scene
 
@@ -88,7 +89,7 @@ def render(record: Record, transfers: Sequence[Transfer], scene: Scene) -> Sound
     A moving body is heard from its direction and distance at each moment, interpolated between
     poses; its arrival time stays that of scene time 0 (no Doppler shift).
     """
-    from threadpoolctl import threadpool_limits  # noqa: PLC0415 (heavy)
+    from threadpoolctl import threadpool_limits
 
     if len(transfers) != len(record.bodies):
         raise ResonateError(

@@ -39,7 +39,7 @@ def again_findings(manifest_file: Path, manifest: Json, *, store: ModeStore | No
     store : ModeStore, optional
         Where solved modes are kept.
     """
-    from resonate.scene.read import parse_scene  # noqa: PLC0415 (heavy)
+    from resonate.scene.read import parse_scene
 
     try:
         scene = parse_scene(manifest["scene"]["text"], where=f"{manifest_file.name}: scene")
@@ -81,9 +81,9 @@ def _compare(manifest_file: Path, scene: Scene, *, store: ModeStore | None) -> I
 
 
 def _compare_sound(sound_file: Path, scene: Scene, ran: Ran) -> Iterator[Finding]:
-    import soundfile  # noqa: PLC0415 (heavy)
+    import soundfile
 
-    from resonate.sound.render import render  # noqa: PLC0415 (heavy)
+    from resonate.sound.render import render
 
     samples, rate_hz = soundfile.read(sound_file, always_2d=True)
     reference = render(ran.record, transfers_of(scene, ran), scene)

@@ -34,7 +34,7 @@ _SHARP_S: Final = 4e-3
 
 def sound_findings(file: Path, manifest: Json) -> Iterator[Finding]:
     """Length, format, position, cues, peak and onsets."""
-    import soundfile  # noqa: PLC0415 (heavy)
+    import soundfile
 
     clock, promised, where = Frames.of(manifest), manifest["sound"], file.name
     with soundfile.SoundFile(file) as wave:
@@ -54,9 +54,9 @@ def sound_findings(file: Path, manifest: Json) -> Iterator[Finding]:
 
 
 def _second_reader(file: Path, samples: Array) -> Finding:
-    import warnings  # noqa: PLC0415 (only here)
+    import warnings
 
-    from scipy.io import wavfile  # noqa: PLC0415 (heavy)
+    from scipy.io import wavfile
 
     with warnings.catch_warnings():
         # It remarks on every chunk it does not know.
@@ -116,7 +116,7 @@ def _level_findings(samples: Array, promised: Json, where: str) -> Iterator[Find
 
 
 def _true_peak(samples: Array) -> float:
-    from scipy.signal import resample_poly  # noqa: PLC0415 (heavy)
+    from scipy.signal import resample_poly
 
     block, margin = 1 << 17, 512
     peak = 0.0

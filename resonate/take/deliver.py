@@ -50,8 +50,8 @@ def write_sound(path: Path, scene: Scene, record: Record, transfers: Sequence[Tr
     TakeError
         If the sound would clip.
     """
-    from resonate.sound.levels import deliver_level, measure  # noqa: PLC0415 (heavy)
-    from resonate.sound.render import render  # noqa: PLC0415 (heavy)
+    from resonate.sound.levels import deliver_level, measure
+    from resonate.sound.render import render
 
     sound = render(record, transfers, scene)
     delivered = deliver_level(sound, _level(scene), full_scale_pa=scene.sound.full_scale_pa)
@@ -118,8 +118,8 @@ def heading(scene: Scene, record: Record, levels: Levels) -> Heading:
 
 def arrivals(scene: Scene, record: Record) -> Arrivals:
     """How late every microphone hears every body, and the delay that was taken out of all."""
-    from resonate.field.air import Air  # noqa: PLC0415 (only with sound)
-    from resonate.sound.hearing import arrivals_s  # noqa: PLC0415 (only with sound)
+    from resonate.field.air import Air
+    from resonate.sound.hearing import arrivals_s
 
     late = arrivals_s(record.bodies, scene)
     names = tuple(mic.name for mic in scene.mics)

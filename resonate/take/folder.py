@@ -198,7 +198,7 @@ def _try_lock(folder: Path) -> int | None:
     """Lock a folder and give its descriptor; None if it is held or gone, -1 where folders have no locks."""
     if sys.platform == "win32":
         return -1
-    import fcntl  # noqa: PLC0415 (not on every system)
+    import fcntl
 
     try:
         descriptor = os.open(folder, os.O_RDONLY)

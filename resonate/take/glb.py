@@ -19,10 +19,10 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from numpy.typing import NDArray
-    from resonate.scene.model import Scene
 
     from resonate.motion.channels import BodyCurves, Curves
     from resonate.run.record import Record
+    from resonate.scene.model import Scene
 
     Array = NDArray[np.float64]
     Single = NDArray[np.float32]

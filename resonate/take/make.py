@@ -89,7 +89,7 @@ class Ran:
 
 def run_scene(scene: Scene, *, store: ModeStore | None = None, progress: Progress = _say_nothing) -> Ran:
     """Build the bodies, find their modes and run; nothing is rendered or written."""
-    from resonate.run.engine import run  # noqa: PLC0415 (heavy)
+    from resonate.run.engine import run
 
     bodies, modes = _solve_bodies(scene, store=store, progress=progress)
     progress("running")
@@ -100,9 +100,9 @@ def _solve_bodies(
     scene: Scene, *, store: ModeStore | None, progress: Progress
 ) -> tuple[tuple[Body, ...], tuple[ModeSet, ...]]:
     # Bodies that are alike are solved once.
-    from resonate.body.build import build_body  # noqa: PLC0415 (heavy)
-    from resonate.modes.solve import solve_modes, solved_hz  # noqa: PLC0415 (heavy)
-    from resonate.modes.store import modes_key  # noqa: PLC0415 (heavy)
+    from resonate.body.build import build_body
+    from resonate.modes.solve import solve_modes, solved_hz
+    from resonate.modes.store import modes_key
 
     bodies: list[Body] = []
     modes: list[ModeSet] = []
@@ -129,11 +129,11 @@ def _renamed(modes: ModeSet, name: str) -> ModeSet:
 def _write_files(
     place: Building, scene: Scene, ran: Ran, *, store: ModeStore | None, progress: Progress
 ) -> None:
-    from resonate.motion.curves import curves as trace  # noqa: PLC0415 (heavy)
-    from resonate.take.deliver import write_sound  # noqa: PLC0415 (heavy)
-    from resonate.take.glb import write_glb  # noqa: PLC0415 (heavy)
-    from resonate.take.manifest import write_manifest  # noqa: PLC0415 (heavy)
-    from resonate.take.tables import write_curves, write_events  # noqa: PLC0415 (heavy)
+    from resonate.motion.curves import curves as trace
+    from resonate.take.deliver import write_sound
+    from resonate.take.glb import write_glb
+    from resonate.take.manifest import write_manifest
+    from resonate.take.tables import write_curves, write_events
 
     record = ran.record
     path = {kind: place.file(ENDINGS[kind]) for kind in scene.take.files}
@@ -173,8 +173,8 @@ def _write_files(
 
 def transfers_of(scene: Scene, ran: Ran) -> list[Transfer]:
     """Radiation of every body into the air of the scene."""
-    from resonate.field.air import Air  # noqa: PLC0415 (heavy)
-    from resonate.field.transfer import transfer_for  # noqa: PLC0415 (heavy)
+    from resonate.field.air import Air
+    from resonate.field.transfer import transfer_for
 
     air = Air.of(scene.world)
     return [transfer_for(body, found, air) for body, found in zip(ran.bodies, ran.modes, strict=True)]

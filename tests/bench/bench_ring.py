@@ -9,13 +9,16 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable
+from typing import TYPE_CHECKING
 
 import numpy as np
 from scipy.signal import lfilter
 from threadpoolctl import threadpool_limits
 
 from resonate.sound.ring import ring
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
 
 MODES, SECONDS, RATE = 1000, 10, 48000.0
 TOLERANCE = 1e-6

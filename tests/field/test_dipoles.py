@@ -83,7 +83,7 @@ def test_the_reference_distance_only_turns_the_phase(air_model):
 def test_a_microphone_inside_the_body_is_refused(air_model):
     x = np.linspace(0.0, 0.3, 61)
     points = np.stack((x, np.zeros_like(x), np.zeros_like(x)), axis=1)
-    skin = np.concatenate([points + [0.0, y, z] for y in (-0.015, 0.015) for z in (-0.02, 0.02)])
+    skin = np.concatenate([points + np.array([0.0, y, z]) for y in (-0.015, 0.015) for z in (-0.02, 0.02)])
     volumes = np.full((len(x), 3), 1e-6)
     transfer = air_model.line(points, volumes, np.ones((len(x), 3)), 5.0, surface=skin)
     with pytest.raises(BodyError, match=r"(?s)closer than 0\.025 m.*move the microphone"):
@@ -93,7 +93,7 @@ def test_a_microphone_inside_the_body_is_refused(air_model):
 
 def test_a_thick_line_is_warned_about(air_model):
     points = np.array([[0.0, 0.0, 0.0], [0.1, 0.0, 0.0]])
-    skin = points + [0.0, 0.02, 0.0]
+    skin = points + np.array([0.0, 0.02, 0.0])
     volumes = np.full((2, 3), 1e-5)
     thick = air_model.line(points, volumes, np.ones((2, 3)), 100.0, surface=skin)
     thin = air_model.line(points, volumes, np.ones((2, 3)), 10.0, surface=skin)

@@ -60,7 +60,7 @@ def test_an_error_leaves_nothing_behind(tmp_path, error):
 def test_an_error_while_replacing_keeps_the_old_one(tmp_path):
     take = make(tmp_path)
     with pytest.raises(ValueError, match="no"), building(tmp_path, take.name, digest=DIGEST, replace=True):
-        raise ValueError("no")  # noqa: EM101 (a test's own)
+        raise ValueError("no")
     assert set(texts(take).values()) == {"first"}
     assert list(tmp_path.iterdir()) == [take]
 

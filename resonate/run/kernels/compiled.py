@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, TypeVar
+from typing import TYPE_CHECKING, TypeVar, cast
 
 import numba
 
@@ -17,5 +17,5 @@ else:
 
 def compiled(kernel: Kernel) -> Kernel:
     """Compile a loop on first use and keep the machine code on disk."""
-    fast: Kernel = numba.njit(cache=True, error_model="numpy")(kernel)
-    return fast
+    fast = numba.njit(cache=True, error_model="numpy")(kernel)
+    return cast("Kernel", fast)

@@ -81,6 +81,4 @@ def solve(delta: float, y_free: float, give: float, stiffness: float, loss: floa
             side = -1
     # The force that the motion will be given, so that work and motion agree to the last bit.
     force = (y_free - y) / give
-    if force < 0.0:
-        force = 0.0
-    return y, force
+    return y, max(force, 0.0)

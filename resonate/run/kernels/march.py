@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     Array = NDArray[np.float64]
+    IntArray = NDArray[np.int64]
 
 _SWEEPS = 400
 _AGREED = 1e-14
@@ -82,7 +83,7 @@ def march_one(
                     s0 += part
                 elif k == 1:
                     s1 += part
-                elif k == 2:
+                elif k == 2:  # noqa: PLR2004 (third of four lanes)
                     s2 += part
                 else:
                     s3 += part
@@ -118,7 +119,9 @@ def settle(delta: Array, y_free: Array, give: Array, contact: Array, h: float, y
     scale = 0.0
     for j in range(count):
         scale = max(scale, abs(y_free[j]) + give[j, j] * pressed(delta[j], y_free[j], contact[j, 0], contact[j, 1] / h))
-    for sweep in range(_SWEEPS):
+    sweeps = 0
+    while sweeps < _SWEEPS:
+        sweeps += 1
         change = 0.0
         for j in range(count):
             reach = y_free[j]
@@ -134,7 +137,7 @@ def settle(delta: Array, y_free: Array, give: Array, contact: Array, h: float, y
         y[j] = y_free[j]
         for k in range(count):
             y[j] -= give[j, k] * force[k]
-    return sweep + 1
+    return sweeps
 
 
 @compiled
@@ -177,7 +180,8 @@ def march_many(
         total = 0.0
         for j in range(count):
             stiffness = contact[j, 0]
-            striker[j, 3] += now[j] * y[j] - (stored(delta[j] + y[j], stiffness) - stored(delta[j], stiffness))
+            gained = stored(delta[j] + y[j], stiffness) - stored(delta[j], stiffness)
+            striker[j, 3] += now[j] * y[j] - gained
             delta[j] += y[j]
             striker[j, 1] -= h * now[j] / striker[j, 2]
             force[j, at] = now[j]
@@ -203,7 +207,9 @@ def march_many(
 
 
 @compiled
-def replay(q: Array, v: Array, step: Array, rows: Array, force: Array, wanted: Array, keep_q: Array, keep_v: Array) -> None:
+def replay(
+    q: Array, v: Array, step: Array, rows: Array, force: Array, wanted: IntArray, keep_q: Array, keep_v: Array
+) -> None:
     """Modes again from stored forces; states before the ``wanted`` (ascending) steps are kept, (k, n)."""
     n, count = q.shape[0], rows.shape[0]
     place = 0
