@@ -38,8 +38,8 @@ material = "rosewood"          # see: resonate presets materials
 place = [0, 1, 0]              # where its left end is, in the world
 # Two soft feet near the nodes of the first mode.
 support = [
-  {{ where = {{ point = ["72 mm", "-7 mm", 0] }}, hold = {{ spring = "2 kN/m", damper = "0.4 N s/m" }} }},
-  {{ where = {{ point = ["248 mm", "-7 mm", 0] }}, hold = {{ spring = "2 kN/m", damper = "0.4 N s/m" }} }},
+  {{ where = {{ point = ["72 mm", "-7 mm", 0] }}, hold = {{ spring = "60 kN/m", damper = "6 N s/m" }} }},
+  {{ where = {{ point = ["248 mm", "-7 mm", 0] }}, hold = {{ spring = "60 kN/m", damper = "6 N s/m" }} }},
 ]
 
 [[strike]]
