@@ -153,7 +153,11 @@ class Body(Protocol):
 
     @property
     def thickness_m(self) -> float:
-        """Smallest wall, for the linearity warning."""
+        """Smallest wall."""
+
+    @property
+    def linear_reach_m(self) -> float:
+        """Deflection above which the linear energies are not enough."""
 
     @property
     def warnings(self) -> tuple[str, ...]:

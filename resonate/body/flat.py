@@ -20,7 +20,7 @@ from resonate.body.energy import Strain, assemble, sample
 from resonate.body.flat_layout import SHEAR, FlatLayout
 from resonate.body.flat_spot import flat_spot
 from resonate.body.heat import Heat
-from resonate.body.reduce import reduced
+from resonate.body.reduce import bending_reach_m, reduced, tension_reach_m
 from resonate.body.spectral import ROUNDING, Grid, basis
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
@@ -134,6 +134,14 @@ class FlatBody:
     def thickness_m(self) -> float:
         """The wall."""
         return self.layout.thickness_m
+
+    @property
+    def linear_reach_m(self) -> float:
+        """Deflection above which the linear energies are not enough."""
+        if not self.is_skin:
+            return bending_reach_m(self.thickness_m)
+        strain = self.layout.tension_n_m / (self.thickness_m * float(self.layout.rigidity[:2, 0].sum()))
+        return tension_reach_m(strain, float(np.ptp(self.grid.nodes_m, axis=0).min()))
 
     @cached_property
     def inertia(self) -> Inertia:

@@ -19,7 +19,7 @@ from resonate.body.display import join, lattice
 from resonate.body.energy import Strain, assemble, sample
 from resonate.body.heat import Heat
 from resonate.body.line_spot import line_spot
-from resonate.body.reduce import reduced
+from resonate.body.reduce import bending_reach_m, reduced, tension_reach_m
 from resonate.body.spectral import ROUNDING, Grid, basis
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
@@ -130,6 +130,14 @@ class LineBody:
         ends = self.layout.section_at(np.linspace(0.0, self.layout.length_m, _STATIONS))
         sizes = np.minimum(ends.height, ends.width)
         return float(np.min(sizes[sizes > 0.0]))
+
+    @property
+    def linear_reach_m(self) -> float:
+        """Deflection above which the linear energies are not enough."""
+        if self.layout.tension_n == 0.0:
+            return bending_reach_m(self.thickness_m)
+        area = float(self.layout.section_at(np.zeros(1)).area[0])
+        return tension_reach_m(self.layout.tension_n / (self.spec.material.young_pa[0] * area), self.layout.length_m)
 
     @cached_property
     def inertia(self) -> Inertia:

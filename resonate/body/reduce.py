@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import TYPE_CHECKING
 
 from resonate.body.body import Forms, HeatForm
@@ -34,3 +35,24 @@ def reduced(stiffness: csr_matrix, mass: csr_matrix, held: Supports, heat: tuple
         damper_ns_m=held.damper_ns_m,
         heat=tuple(HeatForm((form.operator @ basis).tocsr(), form.relaxation_s) for form in heat),
     )
+
+
+# Bending beyond this share of the thickness stretches the middle face (Chu & Herrmann, J. Appl. Mech. 23 (1956) 532).
+_BENT = 0.3
+# Rise of tension, by share, above which the pitch of a string or skin is heard to glide (twice the 1 % of
+# 0.1 ERB at mid frequencies: Jarvelainen & Valimaki 2001).
+_PULLED = 0.02
+
+
+def bending_reach_m(thickness_m: float) -> float:
+    """Deflection of a bar or plate above which linear bending is not enough, m."""
+    return _BENT * thickness_m
+
+
+def tension_reach_m(strain: float, span_m: float) -> float:
+    """Deflection of a string or skin that raises its tension by 2 %, m.
+
+    ``strain`` it is stretched by at rest; ``span_m`` between its supports. Half a wave of height A over the span
+    lengthens it by the share (pi A/(2 span))^2.
+    """
+    return float(2.0 * span_m / math.pi * math.sqrt(_PULLED * strain))

@@ -11,13 +11,14 @@ from threadpoolctl import threadpool_limits
 from resonate.errors import ModesError
 from resonate.modes.factor import factorise
 from resonate.modes.pencil import check_pencil
+from resonate.modes.rigid import rigid_motions
 from resonate.modes.store import content_key, modes_key
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
     from scipy.sparse import csr_matrix
 
-    from resonate.body.body import Body, Forms
+    from resonate.body.body import Body
     from resonate.modes.modeset import ModeSet
     from resonate.modes.store import ModeStore
 
@@ -81,13 +82,14 @@ def residual_compliance(
     if entry is not None:
         return entry.arrays["compliance_m_n"]
     with threadpool_limits(limits=1):
-        answer = _missing(body.forms(), modes, gains, where=where)
+        answer = _missing(body, modes, gains, where=where)
     if store is not None:
         store.save("compliance", key, {"compliance_m_n": answer})  # without it, solved again next time
     return answer
 
 
-def _missing(forms: Forms, modes: ModeSet, gains: csr_matrix, *, where: str) -> Array:
+def _missing(body: Body, modes: ModeSet, gains: csr_matrix, *, where: str) -> Array:
+    forms = body.forms()
     pencil = check_pencil(forms.stiffness, forms.mass, where=where)
     factor = factorise(pencil.shifted(pencil.small_shift), definite=True)
     if factor.negative != 0:
@@ -100,6 +102,10 @@ def _missing(forms: Forms, modes: ModeSet, gains: csr_matrix, *, where: str) -> 
     both = np.hstack([modes.rigid, modes.shape])
     # Shapes over the freedoms that the supports leave: M phi there is what a force is measured by.
     inside = _restrict(forms.basis, both)
+    if body.held:
+        # Motions as a whole are not among the modes of a held body, and give no way either.
+        still = rigid_motions(pencil, factor.solve, free=True, generator=np.random.default_rng(0))
+        inside = np.hstack([still, inside])
     heavy = pencil.mass @ inside
     for _ in range(2):
         force = force - heavy @ (inside.T @ force)

@@ -116,3 +116,16 @@ def test_rows_of_another_body_are_refused(make):
 
     with pytest.raises(ModesError, match="rows over 29 freedoms for a body of 30"):
         residual_compliance(body, solve_modes(body), np.ones((1, 29)))
+
+
+def test_a_held_body_does_not_give_way_as_a_whole(make):
+    # Motion as a whole is neither among its modes nor a compliance: the missing modes alone give.
+    stiffness, mass = make.chain(40, spring_n_m=2e5, mass_kg=0.02, ends="free")
+    body = make.Body(stiffness, mass, held=True, bands=make.Bands(most=6))
+    rows = spots(40)
+
+    modes = solve_modes(body)
+
+    assert modes.rigid.shape[1] == 0
+    found = residual_compliance(body, modes, rows)
+    np.testing.assert_allclose(found, missing_sum(stiffness, mass, rows, 1 + modes.count), rtol=1e-8)
