@@ -13,8 +13,6 @@ if TYPE_CHECKING:
     from resonate.run.blow import Blow
     from resonate.run.track import BodyTrack
 
-# Bending beyond this share of the thickness stretches the middle face (Chu & Herrmann 1956).
-DEFLECTION = 0.3
 # Turning faster than this share of the first mode splits and shifts it.
 SPIN = 0.02
 _LOOKS = 256
@@ -28,7 +26,7 @@ def _bent(track: BodyTrack, body: Body, blow: Blow) -> float:
     swing = np.sqrt(modes.omega**2 - modes.decay.total**2)
     q = track.modal(times).imag / swing[:, None]
     moved = np.abs(blow.row[: modes.count] @ q)
-    if float(moved.max()) <= DEFLECTION * blow.thickness_m:
+    if float(moved.max()) <= body.linear_reach_m:
         return 0.0
     points = body.surface.points_m
     points = points[:: max(1, len(points) // _POINTS)]
@@ -49,11 +47,10 @@ def beyond_linear(track: BodyTrack, body: Body, blows: Sequence[Blow]) -> tuple[
         return ()
     for blow in blows:
         most = _bent(track, body, blow)
-        if most > DEFLECTION * blow.thickness_m:
+        if most > body.linear_reach_m:
             notes.append(
-                f"body {track.name!r}: strike[{blow.strike}] bends it by {1e3 * most:.3g} mm, "
-                f"{most / blow.thickness_m:.2g} of its thickness; above {DEFLECTION} the pitch would glide, "
-                "which this linear model leaves out"
+                f"body {track.name!r}: strike[{blow.strike}] deflects it by {1e3 * most:.3g} mm; above "
+                f"{1e3 * body.linear_reach_m:.3g} mm its pitch would glide, which this linear model leaves out"
             )
     spins = [float(np.linalg.norm(s.rigid.spin_rad_s)) for s in track.segments if s.rigid is not None]
     fastest = max(spins, default=0.0)
