@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import combinations
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.errors import RunError
 from resonate.modes.compliance import residual_compliance
 from resonate.run import hertz
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import NDArray
 
     from resonate.body.body import Body, SurfaceSpot
@@ -23,8 +25,6 @@ if TYPE_CHECKING:
 
 # Seven points whose mean is exact for polynomials of degree 5 over a disc (Stroud 1971, S2 5-1).
 _RING = np.sqrt(2.0 / 3.0)
-# Cosine of the steepest direction that still presses on the surface, and of a normal along the body.
-_GRAZING, _END_FACE = 1e-6, 0.9
 _WEIGHTS = np.array([0.25] + 6 * [0.125])
 
 
@@ -40,12 +40,16 @@ class Blow:
         Name of the striker.
     begin_s : float
         First touch, scene time.
-    point_m, axis : Array
-        (3,) the spot and the unit direction of the push, in the body frame.
-    row : Array
-        (m + r,) gain on every elastic mode and rigid motion, kg**-0.5.
-    give_m_n : float
-        Static compliance of the modes left out, m/N.
+    point_m, inward : Array
+        (3,) the spot and the unit vector into the body there, in the body frame.
+    direction : Array or None
+        (3,) unit direction of the push in the world; None: along the inward normal at the first touch.
+    angle_rad : float
+        By how much the push leans away from the inward normal.
+    gains : Array
+        (3, m + r) motion of the spot along body x, y, z by every elastic mode and rigid motion, kg**-0.5.
+    give_m_n : Array
+        (3, 3) static compliance of the modes left out, in the body frame, m/N.
     mass_kg, speed_m_s, stiffness, loss_s_m : float
         Of the striker and its contact: F = K delta^1.5 (1 + mu delta').
     thickness_m : float
@@ -56,35 +60,41 @@ class Blow:
     striker: str
     begin_s: float
     point_m: Array
-    axis: Array
-    row: Array
-    give_m_n: float
+    inward: Array
+    direction: Array | None
+    angle_rad: float
+    gains: Array
+    give_m_n: Array
     mass_kg: float
     speed_m_s: float
     stiffness: float
     loss_s_m: float
     thickness_m: float
 
+    def axis(self, to_body: Array) -> Array:
+        """Unit direction of the push (3,) in the body frame; ``to_body`` (3, 3) takes world vectors there.
 
-def _axis(spec: StrikeSpec, spot: SurfaceSpot, to_body: Array, where: str) -> Array:
-    inward = -spot.normal
-    if spec.direction is not None:
-        axis = to_body @ np.array(spec.direction)
-        axis = axis / np.linalg.norm(axis)
-        if float(axis @ inward) <= _GRAZING:
-            raise RunError(
-                what=f"direction {list(spec.direction)} points away from the surface at the spot",
-                where=where,
-                fix="turn it round, or leave it out to strike along the inward normal",
-            )
-        return np.asarray(axis)
-    if not spec.angle_rad:
-        return inward
-    # Leaning towards the body's +x, or +z on an end face.
-    lean = np.array([1.0, 0.0, 0.0]) if abs(inward[0]) < _END_FACE else np.array([0.0, 0.0, 1.0])
-    lean = lean - (lean @ inward) * inward
-    lean = lean / np.linalg.norm(lean)
-    return np.asarray(np.cos(spec.angle_rad) * inward + np.sin(spec.angle_rad) * lean)
+        With both given, it leans from the inward normal towards ``direction``; with an angle alone towards the
+        body's +x, or its +z on an end face.
+        """
+        toward = None if self.direction is None else to_body @ self.direction
+        if toward is not None and not self.angle_rad:
+            return np.asarray(toward / np.linalg.norm(toward))
+        if not self.angle_rad:
+            return self.inward
+        lean = self._across(toward)
+        return np.asarray(np.cos(self.angle_rad) * self.inward + np.sin(self.angle_rad) * lean)
+
+    def _across(self, toward: Array | None) -> Array:
+        end_face = abs(self.inward[0]) >= 0.9  # noqa: PLR2004 (most of the normal lies along x)
+        for lean in (toward, np.array([0.0, 0.0, 1.0]) if end_face else np.array([1.0, 0.0, 0.0])):
+            if lean is None:
+                continue
+            flat = lean - (lean @ self.inward) * self.inward
+            size = float(np.linalg.norm(flat))
+            if size > 1e-6:  # noqa: PLR2004 (along the normal there is no side to lean to)
+                return np.asarray(flat / size)
+        raise AssertionError  # one of the body's axes always crosses the normal
 
 
 def _patch(spot: SurfaceSpot, radius_m: float) -> Array:
@@ -97,58 +107,81 @@ def _patch(spot: SurfaceSpot, radius_m: float) -> Array:
     return np.concatenate((spot.point_m[None], spot.point_m + _RING * radius_m * ring))
 
 
-def make_blow(
-    number: int,
-    spec: StrikeSpec,
-    body: Body,
-    modes: ModeSet,
-    *,
-    to_body: Array,
-    store: ModeStore | None = None,
-) -> Blow:
-    """Resolve one strike of the scene.
+def _touched(body: Body, spot: SurfaceSpot, radius_m: float) -> Array:
+    """Motion (3, d) of the spot by every freedom."""
+    if body.family == "line":
+        return np.asarray(body.probe(spot.point_m[None]).todense())
+    # Averaged over the pressed patch, so that fine meshes do not make the spot softer.
+    probes = np.asarray(body.probe(_patch(spot, radius_m)).todense()).reshape(len(_WEIGHTS), 3, -1)
+    return np.asarray(np.einsum("p,pad->ad", _WEIGHTS, probes))
+
+
+def _gives(body: Body, modes: ModeSet, rows: Sequence[Array], store: ModeStore | None) -> list[Array]:
+    """Compliances (3, 3) of the missing modes: of three directions, and of their three sums in pairs."""
+    if not modes.count:
+        return [np.zeros((3, 3)) for _ in rows]
+    pairs = list(combinations(range(3), 2))
+    asked = [np.concatenate((three, [three[a] + three[b] for a, b in pairs])) for three in rows]
+    answers = residual_compliance(body, modes, np.concatenate(asked), store=store).reshape(len(rows), 6)
+    found = []
+    for answer in answers:
+        give = np.diag(answer[:3])
+        for (a, b), both in zip(pairs, answer[3:], strict=True):
+            give[a, b] = give[b, a] = 0.5 * (both - answer[a] - answer[b])
+        found.append(give)
+    return found
+
+
+def make_blows(
+    strikes: Sequence[tuple[int, StrikeSpec]], body: Body, modes: ModeSet, *, store: ModeStore | None = None
+) -> list[Blow]:
+    """Resolve all strikes (number, what was asked) on one body.
 
     Parameters
     ----------
-    number, spec : int, StrikeSpec
-        Which strike.
+    strikes : sequence of (int, StrikeSpec)
+        Number in the scene, and the strike.
     body, modes : Body, ModeSet
-        What it strikes.
-    to_body : Array
-        (3, 3) world to body frame at the time of the strike.
+        What they strike.
     store : ModeStore, optional
         Keeps static compliances.
 
     Raises
     ------
     BodyError, RunError
-        If the spot is off the body or the direction points away from it.
+        If a spot is off the body or a tip does not fit it.
     """
-    where = f"strike[{number}] on body {body.name!r}"
-    spot, striker = body.spot(spec.spot), spec.striker
-    axis = _axis(spec, spot, to_body, where)
-    modulus = hertz.reduced_modulus((striker.tip_young_pa, spot.young_pa), (striker.tip_poisson, spot.poisson))
-    firm = hertz.stiffness(modulus, striker.tip_radius_m, spot.curvature_1_m)
-    if body.family == "line":
-        rows = axis @ np.asarray(body.probe(spot.point_m[None]).todense())
-    else:
-        # Averaged over the pressed patch, so that fine meshes do not make the spot softer.
-        depth = hertz.pulse(firm, striker.mass_kg, spec.speed_m_s).depth_m
-        points = _patch(spot, float(np.sqrt(striker.tip_radius_m * depth)))
-        probes = np.asarray(body.probe(points).todense()).reshape(len(points), 3, -1)
-        rows = np.einsum("p,a,pad->d", _WEIGHTS, axis, probes)
-    give = float(residual_compliance(body, modes, rows[None], store=store)[0]) if modes.count else 0.0
-    return Blow(
-        strike=number,
-        striker=striker.name,
-        begin_s=spec.time_s,
-        point_m=spot.point_m,
-        axis=axis,
-        row=np.concatenate((rows @ modes.shape, rows @ modes.rigid)),
-        give_m_n=give,
-        mass_kg=striker.mass_kg,
-        speed_m_s=spec.speed_m_s,
-        stiffness=firm,
-        loss_s_m=hertz.loss(striker.restitution, striker.reference_speed_m_s),
-        thickness_m=spot.thickness_m,
-    )
+    spots = [body.spot(spec.spot) for _, spec in strikes]
+    locals_ = [
+        hertz.local(
+            hertz.reduced_modulus((spec.striker.tip_young_pa, spot.young_pa), (spec.striker.tip_poisson, spot.poisson)),
+            spec.striker.tip_radius_m,
+            spot.curvature_1_m,
+            where=f"strike[{number}] on body {body.name!r}",
+        )
+        for (number, spec), spot in zip(strikes, spots, strict=True)
+    ]
+    rows = []
+    for (_, spec), spot, local in zip(strikes, spots, locals_, strict=True):
+        depth = hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m
+        rows.append(_touched(body, spot, local.patch_m(depth)))
+    gives = _gives(body, modes, rows, store) if rows else []
+    return [
+        Blow(
+            strike=number,
+            striker=spec.striker.name,
+            begin_s=spec.time_s,
+            point_m=spot.point_m,
+            inward=-spot.normal,
+            direction=None if spec.direction is None else np.array(spec.direction),
+            angle_rad=spec.angle_rad,
+            gains=np.hstack((three @ modes.shape, three @ modes.rigid)),
+            give_m_n=give,
+            mass_kg=spec.striker.mass_kg,
+            speed_m_s=spec.speed_m_s,
+            stiffness=local.stiffness,
+            loss_s_m=hertz.loss(spec.striker.restitution, spec.striker.reference_speed_m_s),
+            thickness_m=spot.thickness_m,
+        )
+        for (number, spec), spot, local, three, give in zip(strikes, spots, locals_, rows, gives, strict=True)
+    ]

@@ -7,6 +7,7 @@ Landau & Lifshitz, Mechanics, sec. 36-37 (Euler's equations).
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -19,12 +20,6 @@ if TYPE_CHECKING:
     from resonate.run.record import RigidState
 
     Array = NDArray[np.float64]
-
-# Steps of the turning integrator: at most this long, and this angle.
-_STEP_S = 1e-3
-_STEP_RAD = 0.01
-# Below this the sine of a half angle is half the angle.
-_STILL_RAD = 1e-9
 
 
 def matrix(turn: Array) -> Array:
@@ -39,12 +34,9 @@ def matrix(turn: Array) -> Array:
 
 
 def turned(turn: Array, angle: Array) -> Array:
-    """Quaternions xyzw after small world rotations ``angle`` (..., 3), rad."""
-    size = np.linalg.norm(angle, axis=-1, keepdims=True)
-    half = 0.5 * size
-    seen = size > _STILL_RAD
-    share = np.where(seen, np.sin(half) / np.where(seen, size, 1.0), 0.5)
-    ax, ay, az = np.moveaxis(angle * share, -1, 0)
+    """Quaternions xyzw after rotation vectors ``angle`` (..., 3) in the world, rad."""
+    half = 0.5 * np.linalg.norm(angle, axis=-1, keepdims=True)
+    ax, ay, az = np.moveaxis(0.5 * angle * np.sinc(half / np.pi), -1, 0)
     aw = np.cos(half)[..., 0]
     x, y, z, w = np.moveaxis(np.broadcast_to(turn, (*angle.shape[:-1], 4)), -1, 0)
     product = np.stack(
@@ -62,28 +54,27 @@ def turned(turn: Array, angle: Array) -> Array:
 def fly(state: RigidState, since_s: Array, *, tensor: Array, gravity: Array) -> tuple[Array, Array, Array, Array]:
     """Place (t, 3), turn (t, 4), speed (t, 3) and spin (t, 3) a time ``since_s`` (t,) after a checkpoint.
 
-    ``tensor`` (3, 3) inertia about the centre in the body frame; ``gravity`` (3,) in the world, m/s^2.
+    Times may come in any order, and be negative. ``tensor`` (3, 3) inertia about the centre in the body frame;
+    ``gravity`` (3,) in the world, m/s^2. The turn is continuous in sign.
     """
-    t = np.asarray(since_s, dtype=np.float64)[:, None]
+    since = np.asarray(since_s, dtype=np.float64)
+    t = since[:, None]
     place = state.place_m + state.speed_m_s * t + 0.5 * gravity * t**2
     speed = state.speed_m_s + gravity * t
-    size = float(np.linalg.norm(state.spin_rad_s))
-    if size == 0.0:
+    if not np.any(state.spin_rad_s):
         return place, np.tile(state.turn, (len(t), 1)), speed, np.zeros_like(place)
-    order = np.argsort(since_s, kind="stable")
-    turn, spin = np.zeros((len(t), 4)), np.zeros((len(t), 3))
-    step = min(_STEP_S, _STEP_RAD / size)
-    body_spin = matrix(state.turn).T @ state.spin_rad_s
-    found_turn, found_spin = turn_free(
-        np.ascontiguousarray(state.turn),
-        body_spin,
-        np.ascontiguousarray(tensor),
-        np.asarray(np.linalg.inv(tensor), dtype=np.float64),
-        np.ascontiguousarray(np.asarray(since_s)[order]),
-        step,
-    )
-    turn[order] = found_turn
-    spin[order] = np.einsum("tij,tj->ti", matrix(found_turn), found_spin)
+    turn, momentum = np.zeros((len(t), 4)), np.zeros((len(t), 3))
+    first: Array = np.ascontiguousarray(state.turn, dtype=np.float64)
+    angular: Array = np.asarray(tensor, dtype=np.float64) @ (matrix(first).T @ state.spin_rad_s)
+    inverse: Array = np.asarray(np.linalg.inv(tensor), dtype=np.float64)
+    order = np.argsort(np.abs(since), kind="stable")
+    for sign in (1.0, -1.0):
+        # Backwards in time a body turns as if its momentum were reversed.
+        at = order[(since[order] < 0.0) == (sign < 0.0)]
+        if len(at):
+            turn[at], found = turn_free(inverse, sign * angular, first, np.abs(since[at]))
+            momentum[at] = sign * found
+    spin = np.einsum("tij,jk,tk->ti", matrix(turn), inverse, momentum)
     return place, turn, speed, spin
 
 
@@ -91,3 +82,18 @@ def rigid_energy(state: RigidState, *, mass_kg: float, tensor: Array) -> float:
     """Kinetic energy of the body as a whole, J."""
     spin = matrix(state.turn).T @ state.spin_rad_s
     return float(0.5 * mass_kg * state.speed_m_s @ state.speed_m_s + 0.5 * spin @ tensor @ spin)
+
+
+@dataclass(frozen=True, slots=True)
+class Kick:
+    """What contacts (k) do to a free body: ``axes`` (k, 3) of the push, ``spin`` (k, 3) per N s, in the world."""
+
+    axes: Array
+    spin: Array
+
+
+def kick_of(axes: Array, arms_m: Array, *, turn: Array, tensor: Array) -> Kick:
+    """Kick of pushes along ``axes`` (k, 3) at ``arms_m`` (k, 3) from the centre, both in the world."""
+    frame = matrix(turn)
+    inverse = frame @ np.linalg.inv(tensor) @ frame.T
+    return Kick(axes, np.asarray(np.cross(arms_m, axes) @ inverse.T))

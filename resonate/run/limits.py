@@ -10,7 +10,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from resonate.body.body import Body
-    from resonate.run.blow import Blow
+    from resonate.run.record import Event
     from resonate.run.track import BodyTrack
 
 # Turning faster than this share of the first mode splits and shifts it.
@@ -19,13 +19,23 @@ _LOOKS = 256
 _POINTS = 400
 
 
-def _bent(track: BodyTrack, body: Body, blow: Blow) -> float:
-    """Largest bending, m, soon after a blow: what is left of the motion when the body's sway is taken off."""
+def _bent(track: BodyTrack, body: Body, strike: int) -> float:
+    """Largest bending, m, soon after a strike: what is left of the motion when the body's sway is taken off."""
     modes = track.modes
-    times = blow.begin_s + np.linspace(0.0, 2.0 / float(modes.frequency_hz[0]), _LOOKS)
-    swing = np.sqrt(modes.omega**2 - modes.decay.total**2)
+    parts = [part for part in track.segments if strike in part.contacts]
+    assert parts[0].rows is not None  # noqa: S101 (contact segments have rows)
+    row = parts[0].rows[parts[0].contacts.index(strike), : modes.count]
+    swing = np.sqrt((modes.omega - modes.decay.total) * (modes.omega + modes.decay.total))
+    # No mode can move more than it did, and what all forces of these segments give it.
+    most = np.abs(parts[0].z[: modes.count])
+    for part in parts:
+        if part.rows is not None and part.force_n is not None:
+            most += np.abs(part.rows[:, : modes.count]).T @ np.sum(part.force_n, axis=1) * part.step_s
+    if float(np.abs(row) @ (most / swing)) <= body.linear_reach_m:
+        return 0.0
+    times = parts[0].begin_s + np.linspace(0.0, 2.0 / float(modes.frequency_hz[0]), _LOOKS)
     q = track.modal(times).imag / swing[:, None]
-    moved = np.abs(blow.row[: modes.count] @ q)
+    moved = np.abs(row @ q)
     if float(moved.max()) <= body.linear_reach_m:
         return 0.0
     points = body.surface.points_m
@@ -39,17 +49,17 @@ def _bent(track: BodyTrack, body: Body, blow: Blow) -> float:
     return float(np.linalg.norm(left.reshape(-1, 3), axis=1).max())
 
 
-def beyond_linear(track: BodyTrack, body: Body, blows: Sequence[Blow]) -> tuple[str, ...]:
+def beyond_linear(track: BodyTrack, body: Body, events: Sequence[Event]) -> tuple[str, ...]:
     """Warnings about deflection and spin."""
     notes = []
     modes = track.modes
     if not modes.count:
         return ()
-    for blow in blows:
-        most = _bent(track, body, blow)
+    for event in events:
+        most = _bent(track, body, event.strike)
         if most > body.linear_reach_m:
             notes.append(
-                f"body {track.name!r}: strike[{blow.strike}] deflects it by {1e3 * most:.3g} mm; above "
+                f"body {track.name!r}: strike[{event.strike}] deflects it by {1e3 * most:.3g} mm; above "
                 f"{1e3 * body.linear_reach_m:.3g} mm its pitch would glide, which this linear model leaves out"
             )
     spins = [float(np.linalg.norm(s.rigid.spin_rad_s)) for s in track.segments if s.rigid is not None]

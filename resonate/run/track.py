@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.run.flight import fly, matrix, turned
+from resonate.run.flight import fly, kick_of, matrix, turned
 from resonate.run.kernels.march import replay
 from resonate.run.propagator import coefficients, exponents, from_state, to_state
 
@@ -24,18 +24,29 @@ if TYPE_CHECKING:
     IntArray = NDArray[np.int64]
 
 
-def lever_moved(segment: Segment, since_s: Array) -> Array:
-    """Double time integral (c, t) of the forces since the segment began, N s^2."""
-    force = segment.force_n
-    assert force is not None  # noqa: S101 (contact segments only)
-    h, steps = segment.step_s, force.shape[1]
-    pushed = np.concatenate((np.zeros((len(force), 1)), np.cumsum(force, axis=1) * h), axis=1)
-    gone = pushed[:, :-1] * h + 0.5 * force * h**2
-    moved = np.concatenate((np.zeros((len(force), 1)), np.cumsum(gone, axis=1)), axis=1)
-    at = np.clip((since_s / h).astype(np.int64), 0, steps)
-    rest = since_s - at * h
-    last = np.where(at < steps, force[:, np.minimum(at, steps - 1)], 0.0)
+def impulse_of(segment: Segment, since_s: Array) -> Array:
+    """Time integral (c, t) of the forces since a contact segment began, N s."""
+    at, rest, last, pushed, _ = _within(segment, since_s)
+    return np.asarray(pushed[:, at] + last * rest)
+
+
+def moved_by(segment: Segment, since_s: Array) -> Array:
+    """Double time integral (c, t) of the forces since a contact segment began, N s^2."""
+    at, rest, last, pushed, moved = _within(segment, since_s)
     return np.asarray(moved[:, at] + pushed[:, at] * rest + 0.5 * last * rest**2)
+
+
+def _within(segment: Segment, since_s: Array) -> tuple[IntArray, Array, Array, Array, Array]:
+    # Step each time falls into, time since it began, force in it; both integrals at the steps.
+    force, h = segment.force_n, segment.step_s
+    assert force is not None  # noqa: S101 (contact segments only)
+    steps = force.shape[1]
+    none = np.zeros((len(force), 1))
+    pushed = np.concatenate((none, np.cumsum(force, axis=1) * h), axis=1)
+    moved = np.concatenate((none, np.cumsum(pushed[:, :-1] * h + 0.5 * force * h**2, axis=1)), axis=1)
+    at = np.clip(np.floor(since_s / h), 0, steps).astype(np.int64)
+    last = np.where(at < steps, force[:, np.minimum(at, steps - 1)], 0.0)
+    return at, since_s - at * h, last, pushed, moved
 
 
 @dataclass(frozen=True)
@@ -85,7 +96,7 @@ class BodyTrack:
         assert segment.rows is not None  # noqa: S101 (contact segments have rows)
         rows = np.ascontiguousarray(segment.rows[:, :count])
         h, steps = segment.step_s, segment.force_n.shape[1]
-        at = np.clip((since / h).astype(np.int64), 0, steps)
+        at = np.clip(np.floor(since / h), 0, steps).astype(np.int64)
         wanted, back = np.unique(at, return_inverse=True)
         q, v = from_state(z, modes.omega, decay)
         q, v = np.ascontiguousarray(q), np.ascontiguousarray(v)
@@ -122,7 +133,7 @@ class BodyTrack:
             since = times[at] - segment.begin_s
             found[:, at] = state.real[:, None] + state.imag[:, None] * since
             if segment.force_n is not None and segment.rows is not None:
-                found[:, at] += segment.rows[:, self.modes.count :].T @ lever_moved(segment, since)
+                found[:, at] += segment.rows[:, self.modes.count :].T @ moved_by(segment, since)
         return found
 
     def pose(self, times_s: Array) -> tuple[Array, Array]:
@@ -146,14 +157,18 @@ class BodyTrack:
         return place, turn
 
     def _flown(self, segment: Segment, times_s: Array) -> tuple[Array, Array]:
-        assert segment.rigid is not None  # noqa: S101 (free bodies have a rigid state)
+        rigid = segment.rigid
+        assert rigid is not None  # noqa: S101 (free bodies have a rigid state)
         since = times_s - segment.begin_s
-        place, turn, _, _ = fly(segment.rigid, since, tensor=self.inertia.tensor, gravity=self.gravity)
-        if segment.force_n is not None and segment.axes is not None and segment.arms_m is not None:
-            moved = lever_moved(segment, since)
-            place = place + moved.T @ segment.axes / self.inertia.mass_kg
-            turn = turned(turn, moved.T @ _twist(segment, self.inertia.tensor))
-        return place, turn
+        if segment.force_n is None or segment.axes is None or segment.arms_m is None:
+            place, turn, _, _ = fly(rigid, since, tensor=self.inertia.tensor, gravity=self.gravity)
+            return place, turn
+        # In contact the frame stands still: see Subject.pushed_on, which ends where this does.
+        kick = kick_of(segment.axes, segment.arms_m, turn=rigid.turn, tensor=self.inertia.tensor)
+        moved, t = moved_by(segment, since).T, since[:, None]
+        place = rigid.place_m + t * rigid.speed_m_s + 0.5 * t**2 * self.gravity
+        place = place + moved @ kick.axes / self.inertia.mass_kg
+        return place, turned(rigid.turn, t * rigid.spin_rad_s + moved @ kick.spin)
 
     def impulse(self, begin_s: Array, end_s: Array) -> Array:
         """Modal impulse (m, t): integral of the modal forces from ``begin_s`` to ``end_s`` (t,)."""
@@ -192,21 +207,6 @@ class BodyTrack:
         return found
 
 
-def _twist(segment: Segment, tensor: Array) -> Array:
-    # World angular acceleration (c, 3) of unit forces, in the frame frozen at the segment's begin.
-    assert segment.rigid is not None  # noqa: S101
-    assert segment.axes is not None  # noqa: S101
-    assert segment.arms_m is not None  # noqa: S101
-    turn = matrix(segment.rigid.turn)
-    inverse = turn @ np.linalg.inv(tensor) @ turn.T
-    return np.asarray(np.cross(segment.arms_m, segment.axes) @ inverse.T)
-
-
 def _pushed(segment: Segment, times_s: Array) -> Array:
-    force = segment.force_n
-    assert force is not None  # noqa: S101 (contact segments only)
-    h, steps = segment.step_s, force.shape[1]
-    total = np.concatenate((np.zeros((len(force), 1)), np.cumsum(force, axis=1) * h), axis=1)
-    since = np.clip(np.asarray(times_s) - segment.begin_s, 0.0, h * steps)
-    at = np.minimum((since / h).astype(np.int64), steps - 1)
-    return np.asarray(total[:, at] + force[:, at] * (since - at * h))
+    since = np.asarray(times_s) - segment.begin_s
+    return impulse_of(segment, np.clip(since, 0.0, segment.end_s - segment.begin_s))

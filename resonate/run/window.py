@@ -1,21 +1,22 @@
-"""A stretch of contact: strikers, modes and rigid motion stepped together until they part for good."""
+"""A stretch of contact of one body: strikers, modes and motion as a whole stepped together."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from resonate.errors import RunError
 from resonate.run import hertz
-from resonate.run.kernels.march import march_many, march_one
+from resonate.run.kernels.march import LANES, march
 from resonate.run.propagator import coefficients
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.run.blow import Blow
+    from resonate.run.subject import Loaded
 
     Array = NDArray[np.float64]
 
@@ -24,175 +25,220 @@ BASE_HZ = 48_000
 LEAST_POWER, MOST_POWER = 2, 9
 # Steps over a Hertz contact when the rate is chosen, and the fewest that are accepted afterwards.
 WANTED, LEAST = 32, 28
-# Without force for this long (and this many steps) a contact may be over.
-_QUIET_S, _QUIET_STEPS = 50e-6, 20
+# Touches that carry less than this share of a blow's impulse need no resolution.
+_SLIGHT = 0.01
+# Without force for this long (and this many steps) a striker may be gone, if nothing reaches it for SAFE_S.
+_QUIET_S, _QUIET_STEPS, _SAFE_S = 50e-6, 20, 0.5e-3
 # A contact that lasts longer than this is no strike.
-_LONGEST_S = 0.5
+LONGEST_S = 0.5
 # Missing modes are carried by one heavily damped mode at this multiple of the highest solved one.
-_STAND_IN, _STAND_IN_ZETA = 2.0, 0.7
-_CHUNK_S = 2e-3
-
-
-@dataclass
-class Motion:
-    """Modes of one body while they are stepped: elastic, rigid, and stand-ins for missing ones.
-
-    ``omega``, ``decay``, ``q``, ``v``, ``work`` (n,). Stand-ins are the last ones, one for each live striker.
-    """
-
-    omega: Array
-    decay: Array
-    q: Array
-    v: Array
-    work: Array
-
-    def grown(self, omega: float, decay: float) -> Motion:
-        """With one more mode, at rest."""
-        zero = np.zeros(1)
-        return Motion(
-            np.append(self.omega, omega),
-            np.append(self.decay, decay),
-            *(np.append(part, zero) for part in (self.q, self.v, self.work)),
-        )
-
-    def copy(self) -> Motion:
-        """An independent copy."""
-        return Motion(self.omega, self.decay, self.q.copy(), self.v.copy(), self.work.copy())
-
-
-@dataclass
-class Hit:
-    """One striker during its contact."""
-
-    blow: Blow
-    row: Array
-    penetration_m: float
-    speed_m_s: float
-    lost: float
-    closing_m_s: float
-    forces: list[tuple[float, float, Array]] = field(default_factory=list)
-    depths: list[Array] = field(default_factory=list)
+STAND_IN, _STAND_IN_ZETA = 2.0, 0.7
+# Time marched before the state is looked at, and least number of steps.
+_CHUNK_S, _CHUNK_STEPS = 1e-4, 32
 
 
 @dataclass(frozen=True, slots=True)
-class Stretch:
-    """Steps of one length: ``begin_s``, ``step_s``, ``force_n`` (c, n) for the strikes ``numbers``."""
+class Piece:
+    """Steps of one length: ``force_n`` (n,) in them and ``depth_m`` (n + 1,) between them."""
 
     begin_s: float
     step_s: float
     force_n: Array
-    numbers: tuple[int, ...]
+    depth_m: Array
 
 
-def first_power(blow: Blow, closing_m_s: float) -> int:
-    """Rate (as a power of two over the base) that the Hertz time of a blow asks for."""
-    pulse = hertz.pulse(blow.stiffness, blow.mass_kg, max(closing_m_s, 1e-6))
-    rate = max(4.0 * BASE_HZ, WANTED / pulse.duration_s)
-    return int(np.clip(np.ceil(np.log2(rate / BASE_HZ) - 1e-9), LEAST_POWER, MOST_POWER))
+@dataclass(frozen=True, slots=True)
+class Hit:
+    """One striker while it is about.
 
-
-def quiet_steps(step_s: float) -> int:
-    """Steps without force after which a contact may be over."""
-    return max(_QUIET_STEPS, int(np.ceil(_QUIET_S / step_s)))
-
-
-def stand_in(blow: Blow, top_omega: float) -> tuple[float, float, float]:
-    """Frequency, decay and gain of the mode that carries the missing compliance of a blow."""
-    omega = _STAND_IN * top_omega
-    return omega, _STAND_IN_ZETA * omega, omega * float(np.sqrt(blow.give_m_n))
-
-
-def advance(
-    motion: Motion,
-    hits: list[Hit],
-    *,
-    begin_s: float,
-    step_s: float,
-    steps: int,
-    quiet: int,
-    drift: Array,
-) -> Stretch:
-    """March at most ``steps`` steps in place; stops early after ``quiet`` steps without force.
-
-    ``drift`` (c, steps): motion of the struck points that no contact force causes.
+    ``axis`` (3,) of its push: in the world for a free body, in the frame of a supported one. ``joined_s``,
+    ``closing_m_s``: first touch; ``place_m`` (3,) of it in the world. ``speed_m_s`` along the axis and
+    ``penetration_m`` now; ``stand_q``, ``stand_v``: its stand-in mode. ``power``: the rate it asks for.
     """
-    table = coefficients(motion.omega, motion.decay, step_s).stacked()
-    rows = np.ascontiguousarray(np.stack([hit.row for hit in hits]))
-    contact = np.array([[hit.blow.stiffness, hit.blow.loss_s_m] for hit in hits])
-    striker = np.array([[hit.penetration_m, hit.speed_m_s, hit.blow.mass_kg, hit.lost, 0.0] for hit in hits])
-    force, depth = np.zeros((len(hits), steps)), np.zeros((len(hits), steps))
-    if len(hits) == 1:
-        done = march_one(
-            motion.q, motion.v, table, rows[0], drift[0], contact[0], striker[0], motion.work, force[0], depth[0],
-            0, quiet, step_s,
-        )  # fmt: skip
-    else:
-        done = march_many(
-            motion.q, motion.v, table, rows, drift, contact, striker, motion.work, force, depth, 0, quiet, step_s
-        )
+
+    blow: Blow
+    axis: Array
+    power: int
+    joined_s: float
+    closing_m_s: float
+    place_m: Array
+    speed_m_s: float
+    penetration_m: float = 0.0
+    stand_q: float = 0.0
+    stand_v: float = 0.0
+    pieces: tuple[Piece, ...] = ()
+
+    @property
+    def force_n(self) -> Array:
+        """(n,) force in every step so far."""
+        return np.concatenate([piece.force_n for piece in self.pieces]) if self.pieces else np.zeros(0)
+
+
+@dataclass(frozen=True, slots=True)
+class Moving:
+    """All that moves in a stretch of constant contacts, each of unit modal mass, (n,) padded with zeros.
+
+    First the body's ``body`` modes and motions, then a stand-in and a striker for each contact. ``rows`` (k, n):
+    contact j closes by ``-rows[j] @ q``; ``elastic`` marks the body's modes with stiffness.
+    """
+
+    omega: Array
+    decay: Array
+    load: Array
+    rows: Array
+    q: Array
+    v: Array
+    body: int
+    elastic: NDArray[np.bool_]
+
+
+def stand_in(give_m_n: float, top_omega: float) -> tuple[float, float, float]:
+    """Frequency, decay and gain of the mode that carries a missing compliance."""
+    omega = STAND_IN * top_omega
+    return omega, _STAND_IN_ZETA * omega, omega * float(np.sqrt(give_m_n))
+
+
+def gather(body: Loaded, *, rows: Array, hits: tuple[Hit, ...], gives: Array) -> Moving:
+    """Put a body (b,) and its strikers side by side; ``rows`` (k, b) gains, ``gives`` (k,) m/N of stand-ins."""
+    size, count = len(body.omega), len(hits)
+    total = -(-(size + 2 * count) // LANES) * LANES
+    padded = [np.zeros(total) for _ in range(5)]
+    for whole, part in zip(padded, (body.omega, body.decay, body.load, body.q, body.v), strict=True):
+        whole[:size] = part
+    wide = np.zeros((count, total))
+    wide[:, :size] = rows
+    stiff = np.zeros(total, dtype=bool)
+    stiff[:size] = body.omega > 0.0
+    top = float(np.max(body.omega, initial=0.0))
     for number, hit in enumerate(hits):
-        hit.penetration_m, hit.speed_m_s, hit.lost = (float(striker[number, k]) for k in (0, 1, 3))
-        hit.forces.append((begin_s, step_s, force[number, :done]))
-        hit.depths.append(depth[number, :done])
-    numbers = tuple(hit.blow.strike for hit in hits)
-    return Stretch(begin_s, step_s, force[:, :done].copy(), numbers)
+        at = size + 2 * number
+        padded[0][at], padded[1][at], wide[number, at] = stand_in(gives[number], top)
+        padded[3][at], padded[4][at] = hit.stand_q, hit.stand_v
+        root = np.sqrt(hit.blow.mass_kg)
+        wide[number, at + 1] = -1.0 / root
+        padded[4][at + 1] = hit.speed_m_s * root
+    return Moving(padded[0], padded[1], padded[2], wide, padded[3], padded[4], size, stiff)
 
 
-def parted(motion: Motion, hit: Hit, *, elastic: int, lost_speed_m_s: float) -> bool:
-    """Whether a striker can never touch again: out of reach of the ringing, and moving away.
+class Stepper:
+    """Marches one stretch, chunk after chunk.
 
-    ``elastic`` is the number of modes with stiffness; ``lost_speed_m_s`` of the struck point by its free fall.
+    ``forces``, ``depths``: parts (k, n) of the forces in the steps and of the depths between them (k, n + 1 in all);
+    ``work`` (all,) and ``lost`` (k,) of the contacts; ``q``, ``v`` the state after ``done`` steps, ``last_q``,
+    ``last_v`` after ``last``, the last step with a force.
     """
-    row = hit.row
-    stiff = motion.omega > 0.0
-    swing = np.sqrt(np.maximum(motion.omega**2 - motion.decay**2, 1e-300))
-    size = np.hypot(motion.q, (motion.v + motion.decay * motion.q) / swing)
-    ringing = np.zeros(len(row), dtype=bool)
-    ringing[:elastic] = True
-    ringing &= stiff
-    reach = float(np.abs(row[ringing]) @ size[ringing])
-    shifted = float(row[ringing] @ motion.q[ringing])
-    # Where the striker stands against the resting surface: penetration plus the present deflection.
-    stands = hit.penetration_m + shifted
-    away = float(row[~stiff] @ motion.v[~stiff]) + lost_speed_m_s - hit.speed_m_s
-    return stands < -reach and away > 0.0
+
+    def __init__(self, moving: Moving, hits: tuple[Hit, ...], step_s: float, where: str) -> None:
+        self.moving, self.hits, self.step_s, self.where = moving, hits, step_s, where
+        self.table = coefficients(moving.omega, moving.decay, step_s).stacked()
+        self.contact = np.array([[hit.blow.stiffness for hit in hits], [hit.blow.loss_s_m / step_s for hit in hits]])
+        self.delta = np.array([hit.penetration_m for hit in hits])
+        self.q, self.v = moving.q.copy(), moving.v.copy()
+        self.work, self.lost = np.zeros_like(self.q), np.zeros(len(hits))
+        self.forces: list[Array] = []
+        self.depths: list[Array] = [self.delta[:, None].copy()]
+        self.done, self.last = 0, 0
+        self.last_q, self.last_v = self.q.copy(), self.v.copy()
+
+    def march(self, steps: int) -> None:
+        """Take some more steps."""
+        count = len(self.hits)
+        force, depth = np.zeros((count, steps)), np.zeros((count, steps + 1))
+        last_q, last_v = np.zeros_like(self.q), np.zeros_like(self.v)
+        last, done = march(
+            self.q, self.v, self.table, self.moving.load, self.moving.rows, self.contact, self.delta,
+            force, depth, self.work, self.lost, last_q, last_v,
+        )  # fmt: skip
+        if done < steps:
+            raise RunError(
+                what=f"the contact force of a step of {self.step_s:g} s was not found",
+                where=self.where,
+                fix="this is a defect of the run; report it with the scene",
+            )
+        if last:
+            self.last, self.last_q, self.last_v = self.done + last, last_q, last_v
+        self.done += steps
+        self.forces.append(force)
+        self.depths.append(depth[:, 1:])
+
+    def quiet_s(self, number: int) -> float:
+        """How long contact ``number`` has been without force, s; its earlier pieces count too."""
+        parts = [*(piece.force_n for piece in self.hits[number].pieces), *(force[number] for force in self.forces)]
+        steps = [*(piece.step_s for piece in self.hits[number].pieces), *(self.step_s for _ in self.forces)]
+        quiet = 0.0
+        for force, step in zip(reversed(parts), reversed(steps), strict=True):
+            on = np.flatnonzero(force > 0.0)
+            quiet += step * (len(force) - (int(on[-1]) + 1 if len(on) else 0))
+            if len(on):
+                break
+        return quiet
+
+    def gone(self, number: int) -> bool:
+        """Whether a striker has left: out of reach of the ringing for a while to come, and not coming back."""
+        if self.quiet_s(number) < max(_QUIET_S, _QUIET_STEPS * self.step_s):
+            return False
+        row, stiff, body = self.moving.rows[number], self.moving.elastic, self.moving.body
+        omega, decay = self.moving.omega[stiff], self.moving.decay[stiff]
+        q, v = self.q[stiff], self.v[stiff]
+        # |q| <= |z| / wd from now on.
+        reach = float(np.abs(row[stiff]) @ np.hypot(q, (v + decay * q) / np.sqrt((omega - decay) * (omega + decay))))
+        stand = body + 2 * number
+        gap = -float(self.delta[number]) - float(row[stiff] @ q) - float(row[stand] * self.q[stand])
+        whole = self.moving.omega == 0.0
+        opening, pull = float(row[whole] @ self.v[whole]), float(row @ self.moving.load)
+        looks = [0.0, _SAFE_S]
+        if pull > 0.0 and 0.0 < -opening < pull * _SAFE_S:
+            looks.append(-opening / pull)
+        nearest = min(gap + opening * time + 0.5 * pull * time**2 for time in looks)
+        return nearest > reach and opening + pull * _SAFE_S >= 0.0
 
 
-def too_long(begin_s: float, now_s: float, hit: Hit, body: str) -> None:
-    """Refuse a contact that does not end.
+def first_power(hit: Hit, omega: Array, row: Array, top_power: int = MOST_POWER) -> int:
+    """Rate (as a power of two over the base) that the Hertz time of a hit asks for.
 
-    Raises
-    ------
-    RunError
-        After half a second.
+    ``row`` (b,) gains on the body's modes of ``omega`` (b,). Modes slower than the contact give way as mass does.
     """
-    if now_s - begin_s < _LONGEST_S:
-        return
-    touched = any(np.any(force > 0.0) for _, _, force in hit.forces)
-    where = f"strike[{hit.blow.strike}] on body {body!r}"
-    if not touched:
-        raise RunError(
-            what=f"the striker does not reach the body, which moves away faster than {hit.blow.speed_m_s:g} m/s",
-            where=where,
-            fix="strike faster, earlier, or from the other side",
-        )
-    raise RunError(
-        what=f"the striker still touches after {_LONGEST_S:g} s",
-        where=where,
-        fix="use a lighter or harder striker, or a higher speed: a strike must leave the body",
-    )
+    speed = max(abs(hit.closing_m_s), 1e-3 * hit.blow.speed_m_s)
+    mass, time = hit.blow.mass_kg, 0.0
+    for _ in range(6):
+        time = hertz.pulse(hit.blow.stiffness, mass, speed).duration_s
+        mass = 1.0 / (1.0 / hit.blow.mass_kg + float(np.sum(row**2 / (1.0 + (omega * time / np.pi) ** 2))))
+    rate = max(4.0 * BASE_HZ, WANTED / time)
+    return int(np.clip(np.ceil(np.log2(rate / BASE_HZ) - 1e-9), LEAST_POWER, top_power))
+
+
+def finer(hit: Hit) -> int:
+    """Power of the rate at which the shortest touch that counts has enough steps; the present one if it has."""
+    force = hit.force_n
+    step = np.concatenate([np.full(len(piece.force_n), piece.step_s) for piece in hit.pieces])
+    on = np.concatenate(([False], force > 0.0, [False]))
+    begins, ends = np.flatnonzero(on[1:] & ~on[:-1]), np.flatnonzero(on[:-1] & ~on[1:])
+    impulse = np.concatenate(([0.0], np.cumsum(force * step)))
+    counts = (impulse[ends] - impulse[begins]) > _SLIGHT * impulse[-1]
+    if not np.any(counts):
+        return hit.power
+    # A step cut short by the next strike counts as its share.
+    full = 1.0 / (BASE_HZ * 2.0**hit.power)
+    passed = np.concatenate(([0.0], np.cumsum(step / full)))
+    least = float(np.min((passed[ends] - passed[begins])[counts]))
+    if least >= LEAST - 1e-6:
+        return hit.power
+    return min(MOST_POWER, hit.power + max(1, int(np.ceil(np.log2(LEAST / least)))))
 
 
 def chunk(step_s: float) -> int:
     """Steps marched before the state is looked at."""
-    return max(256, int(_CHUNK_S / step_s))
+    return max(_CHUNK_STEPS, int(np.ceil(_CHUNK_S / step_s)))
 
 
-def shortest_run(hit: Hit) -> int:
-    """Steps of the first touch; a large number when it never touched."""
-    force = np.concatenate([part for _, _, part in hit.forces]) if hit.forces else np.zeros(0)
-    on = np.flatnonzero(force > 0.0)
-    if not len(on):
-        return 10**9
-    off = np.flatnonzero(force[on[0] :] == 0.0)
-    return int(off[0]) if len(off) else len(force) - int(on[0])
+def advanced(hit: Hit, moving: Moving, number: int, q: Array, v: Array, piece: Piece) -> Hit:
+    """Take a hit to the end of a stretch with state ``q``, ``v``."""
+    stand = moving.body + 2 * number
+    return replace(
+        hit,
+        speed_m_s=float(v[stand + 1]) / float(np.sqrt(hit.blow.mass_kg)),
+        penetration_m=float(piece.depth_m[-1]),
+        stand_q=float(q[stand]),
+        stand_v=float(v[stand]),
+        pieces=(*hit.pieces, piece),
+    )

@@ -1,4 +1,9 @@
-"""Torque-free turning by Runge-Kutta of order 4 on a fixed step from the checkpoint."""
+"""Torque-free turning by Taylor series, to rounding, for any inertia.
+
+References
+----------
+Hairer, Norsett & Wanner, Solving Ordinary Differential Equations I (1993), sec. I.8: Taylor series methods.
+"""
 
 from __future__ import annotations
 
@@ -13,57 +18,76 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
-
-@compiled
-def _slope(turn: Array, spin: Array, tensor: Array, inverse: Array, turn_out: Array, spin_out: Array) -> None:
-    x, y, z, w = turn[0], turn[1], turn[2], turn[3]
-    a, b, c = spin[0], spin[1], spin[2]
-    turn_out[0] = 0.5 * (w * a + y * c - z * b)
-    turn_out[1] = 0.5 * (w * b + z * a - x * c)
-    turn_out[2] = 0.5 * (w * c + x * b - y * a)
-    turn_out[3] = 0.5 * (-x * a - y * b - z * c)
-    l0 = tensor[0, 0] * a + tensor[0, 1] * b + tensor[0, 2] * c
-    l1 = tensor[1, 0] * a + tensor[1, 1] * b + tensor[1, 2] * c
-    l2 = tensor[2, 0] * a + tensor[2, 1] * b + tensor[2, 2] * c
-    t0, t1, t2 = l1 * c - l2 * b, l2 * a - l0 * c, l0 * b - l1 * a
-    for i in range(3):
-        spin_out[i] = inverse[i, 0] * t0 + inverse[i, 1] * t1 + inverse[i, 2] * t2
+# Order of the series, and the size of its last terms relative to the first.
+_ORDER = 20
+_LAST = 1e-18
 
 
 @compiled
-def _advance(turn: Array, spin: Array, tensor: Array, inverse: Array, h: float) -> None:
-    kt, ks = np.zeros((4, 4)), np.zeros((4, 3))
-    _slope(turn, spin, tensor, inverse, kt[0], ks[0])
-    _slope(turn + 0.5 * h * kt[0], spin + 0.5 * h * ks[0], tensor, inverse, kt[1], ks[1])
-    _slope(turn + 0.5 * h * kt[1], spin + 0.5 * h * ks[1], tensor, inverse, kt[2], ks[2])
-    _slope(turn + h * kt[2], spin + h * ks[2], tensor, inverse, kt[3], ks[3])
-    turn += h / 6.0 * (kt[0] + 2.0 * kt[1] + 2.0 * kt[2] + kt[3])
-    spin += h / 6.0 * (ks[0] + 2.0 * ks[1] + 2.0 * ks[2] + ks[3])
-    turn /= np.sqrt(np.sum(turn * turn))
+def _series(slowness: Array, m: Array, w: Array, q: Array) -> None:
+    for n in range(_ORDER + 1):
+        for a in range(3):
+            w[n, a] = slowness[a, 0] * m[n, 0] + slowness[a, 1] * m[n, 1] + slowness[a, 2] * m[n, 2]
+        if n == _ORDER:
+            return
+        for a in range(3):
+            b, e = (a + 1) % 3, (a + 2) % 3
+            total, part = 0.0, 0.0
+            for k in range(n + 1):
+                total += m[k, b] * w[n - k, e] - m[k, e] * w[n - k, b]
+                part += q[k, 3] * w[n - k, a] + q[k, b] * w[n - k, e] - q[k, e] * w[n - k, b]
+            m[n + 1, a] = total / (n + 1)
+            q[n + 1, a] = 0.5 * part / (n + 1)
+        real = 0.0
+        for k in range(n + 1):
+            real -= q[k, 0] * w[n - k, 0] + q[k, 1] * w[n - k, 1] + q[k, 2] * w[n - k, 2]
+        q[n + 1, 3] = 0.5 * real / (n + 1)
 
 
 @compiled
-def turn_free(
-    turn: Array, spin: Array, tensor: Array, inverse: Array, times: Array, step: float
-) -> tuple[Array, Array]:
-    """Turn (t, 4) and body-frame spin (t, 3) at ascending ``times`` after the checkpoint (may be negative)."""
-    turns, spins = np.zeros((times.shape[0], 4)), np.zeros((times.shape[0], 3))
-    now_turn, now_spin = turn.copy(), spin.copy()
-    done = 0
-    for n in range(times.shape[0]):
-        if times[n] < 0.0:
-            part_turn, part_spin = turn.copy(), spin.copy()
-            count = int(-times[n] / step)
-            for _ in range(count):
-                _advance(part_turn, part_spin, tensor, inverse, -step)
-            _advance(part_turn, part_spin, tensor, inverse, times[n] + count * step)
-        else:
-            count = int(times[n] / step)
-            while done < count:
-                _advance(now_turn, now_spin, tensor, inverse, step)
-                done += 1
-            part_turn, part_spin = now_turn.copy(), now_spin.copy()
-            _advance(part_turn, part_spin, tensor, inverse, times[n] - done * step)
-        turns[n] = part_turn
-        spins[n] = part_spin
-    return turns, spins
+def _reach(m: Array, q: Array) -> float:
+    size = np.sqrt(np.sum(m[0] ** 2))
+    step = np.inf
+    for n in (_ORDER - 1, _ORDER):
+        last = np.sqrt(np.sum(q[n] ** 2))
+        if last > 0.0:
+            step = min(step, (_LAST / last) ** (1.0 / n))
+        last = np.sqrt(np.sum(m[n] ** 2))
+        if last > 0.0:
+            step = min(step, (_LAST * size / last) ** (1.0 / n))
+    return step
+
+
+@compiled
+def _sum(series: Array, time: float, out: Array) -> None:
+    out[:] = series[_ORDER]
+    for n in range(_ORDER - 1, -1, -1):
+        out[:] = out * time + series[n]
+
+
+@compiled
+def turn_free(slowness: Array, momentum: Array, turn: Array, times: Array) -> tuple[Array, Array]:
+    """Turns (t, 4) and body-frame angular momenta (t, 3) at ascending times from 0 on.
+
+    ``slowness`` (3, 3) inverse inertia tensor in the body frame; ``momentum`` (3,) in the body frame;
+    ``turn`` (4,) xyzw. Solves ``L' = L x w``, ``turn' = turn w / 2`` (Euler).
+    """
+    out_turn, out_momentum = np.empty((len(times), 4)), np.empty((len(times), 3))
+    m, w, q = np.zeros((_ORDER + 1, 3)), np.zeros((_ORDER + 1, 3)), np.zeros((_ORDER + 1, 4))
+    m[0], q[0] = momentum, turn
+    begin, place = 0.0, 0
+    while place < len(times):
+        _series(slowness, m, w, q)
+        step = _reach(m, q)
+        while place < len(times) and times[place] - begin <= step:
+            _sum(m, times[place] - begin, out_momentum[place])
+            _sum(q, times[place] - begin, out_turn[place])
+            out_turn[place] /= np.sqrt(np.sum(out_turn[place] ** 2))
+            place += 1
+        if place < len(times):
+            next_l, next_q = np.empty(3), np.empty(4)
+            _sum(m, step, next_l)
+            _sum(q, step, next_q)
+            m[0], q[0] = next_l, next_q / np.sqrt(np.sum(next_q**2))
+            begin += step
+    return out_turn, out_momentum

@@ -1,0 +1,262 @@
+"""From the first touch until every striker has left: strikers join and leave, steps become finer where needed."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.errors import RunError
+from resonate.run import ledger as books
+from resonate.run import window
+from resonate.run.flight import kick_of
+from resonate.run.record import Ledger, Segment
+from resonate.run.subject import State
+from resonate.run.track import impulse_of, moved_by
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from numpy.typing import NDArray
+
+    from resonate.run.blow import Blow
+    from resonate.run.record import RigidState
+    from resonate.run.subject import Subject
+    from resonate.run.window import Hit, Moving, Stepper
+
+    Array = NDArray[np.float64]
+
+# A gap to the next strike below this is no step of its own.
+_INSTANT_S = 1e-12
+# A free body's frame stands still until it has turned by this much; then gains and arms are taken anew.
+_STILL_RAD = 1e-3
+_LEAST_STEPS = 8
+
+
+@dataclass(frozen=True, slots=True)
+class Passage:
+    """What one window of contact did: segments, the strikers, the state after it, and its ledger entries."""
+
+    segments: tuple[Segment, ...]
+    hits: tuple[Hit, ...]
+    after: State
+    ledger: Ledger
+
+
+@dataclass(frozen=True, slots=True)
+class _Mark:
+    # Where to go back to when a hit needs finer steps: all just before it joins.
+    state: State
+    live: tuple[Hit, ...]
+    segments: tuple[Segment, ...]
+    done: tuple[Hit, ...]
+    waiting: tuple[Blow, ...]
+    ledger: Ledger
+
+
+def passage(subject: Subject, state: State, blows: Sequence[Blow]) -> Passage:
+    """March from the first blow, which begins at ``state``, until every striker has left.
+
+    Later blows, in order of time, join while it lasts. When a touch turns out to have fewer than 28 steps, all since
+    its striker joined is done again with finer ones.
+
+    Raises
+    ------
+    RunError
+        If a striker does not touch, or does not leave.
+    """
+    run = _Run(subject, state, blows)
+    while True:
+        run.join()
+        if not run.now.live:
+            now = run.now
+            return Passage(now.segments, now.done, now.state, now.ledger)
+        run.stretch()
+
+
+class _Run:
+    def __init__(self, subject: Subject, state: State, blows: Sequence[Blow]) -> None:
+        self.subject = subject
+        self.now = _Mark(state, (), (), (), tuple(blows), Ledger.empty())
+        self.marks: dict[int, _Mark] = {}
+        self.powers: dict[int, int] = {}
+
+    def _where(self, blow: Blow) -> str:
+        return f"strike[{blow.strike}] on body {self.subject.name!r}"
+
+    def join(self) -> None:
+        """Let every blow begin whose time has come."""
+        while self.now.waiting and self.now.waiting[0].begin_s - self.now.state.time_s <= _INSTANT_S:
+            now, blow = self.now, self.now.waiting[0]
+            if not now.live and now.segments:
+                return
+            self.marks[blow.strike] = now
+            hit = self._touching(blow, now.state)
+            given = replace(Ledger.empty(), given=0.5 * blow.mass_kg * blow.speed_m_s**2)
+            self.now = replace(now, live=(*now.live, hit), waiting=now.waiting[1:], ledger=now.ledger.plus(given))
+
+    def _touching(self, blow: Blow, state: State) -> Hit:
+        subject, rigid = self.subject, state.rigid
+        to_body = subject.to_body(rigid)
+        axis = blow.axis(to_body)
+        if float(axis @ blow.inward) <= 1e-6:  # noqa: PLR2004 (grazing)
+            raise RunError(
+                what="its direction points away from the surface at the spot",
+                where=self._where(blow),
+                fix="turn it round, or leave it out to strike along the inward normal",
+            )
+        body, row = subject.loaded(state), subject.row(blow, axis, rigid)
+        hit = window.Hit(
+            blow=blow,
+            # A striker moves along a line in the world, so a free body may turn under it.
+            axis=axis if rigid is None else to_body.T @ axis,
+            power=window.LEAST_POWER,
+            joined_s=state.time_s,
+            closing_m_s=blow.speed_m_s - float(row @ body.v),
+            place_m=subject.in_world(blow.point_m, rigid),
+            speed_m_s=blow.speed_m_s,
+        )
+        power = self.powers.get(blow.strike) or window.first_power(hit, body.omega, row)
+        return replace(hit, power=power)
+
+    def stretch(self) -> None:
+        """March until a striker leaves, another comes, or the body has turned."""
+        now, live = self.now, self.now.live
+        step_s = 1.0 / (window.BASE_HZ * 2.0 ** max(hit.power for hit in live))
+        ahead = now.waiting[0].begin_s - now.state.time_s if now.waiting else np.inf
+        left = int(min(ahead / step_s + 1e-9, 2**40))
+        if left == 0:
+            # Steps do not end where the next strike begins: one shorter step does.
+            step_s, left = ahead, 1
+        moving = self._moving(now.state, live)
+        stepper = window.Stepper(moving, live, step_s, self._where(live[0].blow))
+        pace = self._pace(now.state)
+        while True:
+            steps = min(window.chunk(step_s), left, max(_LEAST_STEPS, int(pace / step_s)))
+            stepper.march(steps)
+            left -= steps
+            gone = [stepper.gone(number) for number in range(len(live))]
+            time_s = now.state.time_s + step_s * stepper.done
+            self._refuse_long(live, gone, time_s, stepper)
+            if any(gone) or left == 0 or self._turned(stepper) > _STILL_RAD:
+                break
+        self._close(stepper, gone)
+
+    def _moving(self, state: State, live: tuple[Hit, ...]) -> Moving:
+        subject, rigid = self.subject, state.rigid
+        body, to_body = subject.loaded(state), subject.to_body(rigid)
+        axes = [hit.axis if rigid is None else to_body @ hit.axis for hit in live]
+        return window.gather(
+            body,
+            rows=np.stack([subject.row(hit.blow, axis, rigid) for hit, axis in zip(live, axes, strict=True)]),
+            hits=live,
+            gives=np.array([axis @ hit.blow.give_m_n @ axis for hit, axis in zip(live, axes, strict=True)]),
+        )
+
+    def _pace(self, state: State) -> float:
+        """Time in which a free body turns by half of what its frame may stand still for."""
+        rigid = state.rigid
+        if rigid is None:
+            return np.inf
+        rate = float(np.linalg.norm(rigid.spin_rad_s))
+        axes, arms = self._levers(rigid)
+        kick = kick_of(axes, arms, turn=rigid.turn, tensor=self.subject.inertia.tensor)
+        for hit, spin in zip(self.now.live, kick.spin, strict=True):
+            rate += 2.0 * hit.blow.mass_kg * hit.blow.speed_m_s * float(np.linalg.norm(spin))
+        return 0.5 * _STILL_RAD / rate if rate > 0.0 else np.inf
+
+    def _levers(self, rigid: RigidState) -> tuple[Array, Array]:
+        to_world = self.subject.to_body(rigid).T
+        centre = self.subject.inertia.centre_m
+        arms = [to_world @ (hit.blow.point_m - centre) for hit in self.now.live]
+        return np.stack([hit.axis for hit in self.now.live]), np.stack(arms)
+
+    def _turned(self, stepper: Stepper) -> float:
+        if not self.subject.free:
+            return 0.0
+        moments = np.linalg.eigvalsh(self.subject.inertia.tensor)
+        body = stepper.moving.body
+        return float(np.linalg.norm(stepper.q[body - 3 : body] / np.sqrt(moments)))
+
+    def _refuse_long(self, live: tuple[Hit, ...], gone: list[bool], time_s: float, stepper: Stepper) -> None:
+        for number, (hit, left) in enumerate(zip(live, gone, strict=True)):
+            if not left and time_s - hit.joined_s < window.LONGEST_S:
+                continue
+            touched = np.any(hit.force_n > 0.0) or any(np.any(force[number] > 0.0) for force in stepper.forces)
+            if not touched:
+                raise RunError(
+                    what=f"the striker never touches: the surface moves away from its {hit.blow.speed_m_s:g} m/s",
+                    where=self._where(hit.blow),
+                    fix="strike faster, at another time, or from the other side",
+                )
+            if not left:
+                raise RunError(
+                    what=f"the striker has not left after {window.LONGEST_S:g} s",
+                    where=self._where(hit.blow),
+                    fix="use a lighter or harder striker, or a higher speed: a strike must leave the body",
+                )
+
+    def _close(self, stepper: Stepper, gone: list[bool]) -> None:
+        """Book a stretch; it ends with the last force if everybody leaves, so that ringing is free again."""
+        now, moving = self.now, stepper.moving
+        steps, q, v = stepper.done, stepper.q, stepper.v
+        if all(gone):
+            steps, q, v = stepper.last, stepper.last_q, stepper.last_v
+        force = np.concatenate(stepper.forces, axis=1)
+        depth = np.concatenate(stepper.depths, axis=1)
+        hits = tuple(
+            window.advanced(
+                hit,
+                moving,
+                number,
+                q,
+                v,
+                window.Piece(now.state.time_s, stepper.step_s, force[number], depth[number]),
+            )
+            for number, hit in enumerate(now.live)
+        )
+        leaving = tuple(hit for hit, left in zip(hits, gone, strict=True) if left)
+        for hit in leaving:
+            power = window.finer(hit)
+            if power > hit.power:
+                self.powers[hit.blow.strike] = power
+                self.now = self.marks[hit.blow.strike]
+                return
+        entries = books.stretch(self.subject, moving, q, v, work=stepper.work, lost=stepper.lost)
+        top = float(np.max(moving.omega[: moving.body], initial=0.0))
+        for hit in leaving:
+            held = 0.5 * (hit.stand_v**2 + (window.STAND_IN * top * hit.stand_q) ** 2)
+            kinetic = 0.5 * hit.blow.mass_kg * hit.speed_m_s**2
+            entries = entries.plus(replace(Ledger.empty(), striker_left=kinetic, lost_truncation=held))
+        segment, after = self._segment(stepper, force[:, :steps], q, v)
+        self.now = _Mark(
+            state=after,
+            live=tuple(hit for hit, left in zip(hits, gone, strict=True) if not left),
+            segments=(*now.segments, segment) if steps else now.segments,
+            done=(*now.done, *leaving),
+            waiting=now.waiting,
+            ledger=now.ledger.plus(entries),
+        )
+
+    def _segment(self, stepper: Stepper, force: Array, q: Array, v: Array) -> tuple[Segment, State]:
+        subject, state, body = self.subject, self.now.state, stepper.moving.body
+        rigid = state.rigid
+        axes, arms = self._levers(rigid) if rigid is not None else (None, None)
+        segment = Segment(
+            begin_s=state.time_s,
+            z=state.z,
+            rigid=rigid,
+            step_s=stepper.step_s,
+            force_n=force,
+            rows=np.ascontiguousarray(stepper.moving.rows[:, : subject.kept]),
+            contacts=tuple(hit.blow.strike for hit in self.now.live),
+            axes=axes,
+            arms_m=arms,
+        )
+        if rigid is not None and axes is not None and arms is not None:
+            since = segment.end_s - segment.begin_s
+            kick = kick_of(axes, arms, turn=rigid.turn, tensor=subject.inertia.tensor)
+            end = np.array([since])
+            rigid = subject.pushed_on(rigid, since, moved_by(segment, end)[:, 0], impulse_of(segment, end)[:, 0], kick)
+        return segment, State(segment.end_s, subject.closed(q[:body], v[:body]), rigid)
