@@ -10,6 +10,7 @@ import numpy as np
 from resonate.run import ledger as books
 from resonate.run.passage import passage
 from resonate.run.record import Event, Ledger, Segment
+from resonate.run.track import crest
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -81,7 +82,7 @@ def event_of(body: str, hit: Hit) -> Event:
         end_s=end_s,
         place_m=hit.place_m,
         impulse_ns=float(force @ steps),
-        peak_n=float(force.max()),
+        peak_n=max(crest(piece.force_n, int(np.argmax(piece.force_n))) for piece in hit.pieces),
         closing_speed_m_s=closing,
         leaving_speed_m_s=float((before[clear] - after[clear]) / steps[clear]),
         strike=hit.blow.strike,

@@ -36,6 +36,22 @@ def moved_by(segment: Segment, since_s: Array) -> Array:
     return np.asarray(moved[:, at] + pushed[:, at] * rest + 0.5 * last * rest**2)
 
 
+def crest(force_n: Array, at: int) -> float:
+    """Top of the pulse behind step means ``force_n`` (n,) of equal steps, N, near its step ``at``.
+
+    Three means fix a parabola; where ``at`` is no local maximum its mean stands.
+    """
+    middle = float(force_n[at])
+    if not 0 < at < len(force_n) - 1:
+        return middle
+    before, after = float(force_n[at - 1]), float(force_n[at + 1])
+    bend, slope = 0.5 * (after - 2.0 * middle + before), 0.5 * (after - before)
+    if bend >= 0.0 or min(before, after) <= 0.0 or max(before, after) > middle:
+        return middle
+    # The mean of the parabola over its own step exceeds its middle by bend / 12.
+    return middle - bend / 12.0 - slope**2 / (4.0 * bend)
+
+
 def _within(segment: Segment, since_s: Array) -> tuple[IntArray, Array, Array, Array, Array]:
     # Step each time falls into, time since it began, force in it; both integrals at the steps.
     force, h = segment.force_n, segment.step_s
@@ -193,17 +209,20 @@ class BodyTrack:
         return found
 
     def force_peak(self, begin_s: Array, end_s: Array) -> Array:
-        """Largest contact force (t,), N, between ``begin_s`` and ``end_s`` (t,)."""
+        """Largest single contact force (t,), N, between ``begin_s`` and ``end_s`` (t,)."""
         found = np.zeros(len(begin_s))
         for segment in self.segments:
-            if segment.force_n is None:
+            force = segment.force_n
+            if force is None:
                 continue
-            edges = segment.begin_s + segment.step_s * np.arange(segment.force_n.shape[1] + 1)
-            total = segment.force_n.max(axis=0)
+            edges = segment.begin_s + segment.step_s * np.arange(force.shape[1] + 1)
             touched = np.flatnonzero((np.asarray(begin_s) < edges[-1]) & (np.asarray(end_s) > edges[0]))
-            for at in touched:
-                meets = (edges[:-1] < end_s[at]) & (edges[1:] > begin_s[at])
-                found[at] = max(found[at], float(np.max(total[meets], initial=0.0)))
+            for frame in touched:
+                first = max(int(np.searchsorted(edges, begin_s[frame], side="right")) - 1, 0)
+                last = min(int(np.searchsorted(edges, end_s[frame], side="left")), force.shape[1])
+                inside = force[:, first:last]
+                contact, at = np.unravel_index(int(np.argmax(inside)), inside.shape)
+                found[frame] = max(found[frame], crest(force[contact], first + int(at)))
         return found
 
 

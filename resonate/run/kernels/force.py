@@ -24,6 +24,7 @@ if TYPE_CHECKING:
 
 # Relative size of the equation's remainder at which it counts as solved.
 _TOLERANCE = 1e-14
+_ROUNDING = 4e-16
 _BISECT_EVERY = 8
 _MOST = 200
 # Sweeps over several contacts, and the change of force relative to the largest at which they agree.
@@ -61,7 +62,6 @@ def solve(delta: float, y_free: float, give: float, stiffness: float, loss: floa
     high, high_left = y_free, give * top
     low = y_free - give * top
     low_left = low - y_free + give * pressed(delta, low, stiffness, loss)
-    scale = abs(y_free) + give * top
     side = 0
     for turn in range(1, _MOST):
         y = 0.5 * (low + high)
@@ -71,7 +71,8 @@ def solve(delta: float, y_free: float, give: float, stiffness: float, loss: floa
                 y = secant
         force = pressed(delta, y, stiffness, loss)
         left = y - y_free + give * force
-        if abs(left) <= _TOLERANCE * scale or y in (low, high):
+        # Where the bracket has shrunk to rounding, no better answer can be told apart.
+        if abs(left) <= _TOLERANCE * (abs(y_free) + give * force) or high - low <= _ROUNDING * max(abs(low), abs(high)):
             return force
         # An end that stays twice counts half (the Illinois rule), so that both ends close in.
         if left > 0.0:
