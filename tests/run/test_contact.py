@@ -116,13 +116,14 @@ def test_no_step_adds_energy_in_400_stiff_systems():
     """Stiffness, damping, rate and modes drawn at random, far beyond what a run would choose."""
     rng = np.random.default_rng(7)
     worst = -np.inf
-    for _ in range(400):
+    for number in range(400):
         rate_hz = 48000.0 * 2.0 ** rng.integers(0, 5)
         stiffness, mu = 10.0 ** rng.uniform(5, 11), rng.uniform(0.0, 30.0)
         count = int(rng.integers(1, 24))
         # Modes up to four times the rate of the steps.
         omega = np.append(2.0 * np.pi * 10.0 ** rng.uniform(1.5, np.log10(4.0 * rate_hz), count), 0.0)
-        decay = np.append(omega[:-1] * 10.0 ** rng.uniform(-5, -0.5, count), 0.0)
+        # Every other system has no loss at all: there rounding alone must keep the bound.
+        decay = np.append(omega[:-1] * 10.0 ** rng.uniform(-5, -0.5, count), 0.0) * (number % 2)
         mass = 10.0 ** rng.uniform(-3, 0)
         rows = np.append(rng.normal(size=count) / np.sqrt(10.0 ** rng.uniform(-2, 1)), -1.0 / np.sqrt(mass))[None]
         q = np.append(rng.normal(size=count) * 1e-4 / omega[:-1] * rng.uniform(0, 1e3), 0.0)
