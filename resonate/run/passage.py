@@ -158,13 +158,13 @@ class _Run:
         """Time in which a free body turns by half of what its frame may stand still for."""
         rigid = state.rigid
         if rigid is None:
-            return np.inf
+            return window.LONGEST_S
         rate = float(np.linalg.norm(rigid.spin_rad_s))
         axes, arms = self._levers(rigid)
         kick = kick_of(axes, arms, turn=rigid.turn, tensor=self.subject.inertia.tensor)
         for hit, spin in zip(self.now.live, kick.spin, strict=True):
             rate += 2.0 * hit.blow.mass_kg * hit.blow.speed_m_s * float(np.linalg.norm(spin))
-        return 0.5 * _STILL_RAD / rate if rate > 0.0 else np.inf
+        return 0.5 * _STILL_RAD / rate if rate > 0.0 else window.LONGEST_S
 
     def _levers(self, rigid: RigidState) -> tuple[Array, Array]:
         to_world = self.subject.to_body(rigid).T
@@ -229,11 +229,14 @@ class _Run:
             held = 0.5 * (hit.stand_v**2 + (window.STAND_IN * top * hit.stand_q) ** 2)
             kinetic = 0.5 * hit.blow.mass_kg * hit.speed_m_s**2
             entries = entries.plus(replace(Ledger.empty(), striker_left=kinetic, lost_truncation=held))
-        segment, after = self._segment(stepper, force[:, :steps], q, v)
+        segments, after = now.segments, now.state
+        if steps:
+            segment, after = self._segment(stepper, force[:, :steps], q, v)
+            segments = (*segments, segment)
         self.now = _Mark(
             state=after,
             live=tuple(hit for hit, left in zip(hits, gone, strict=True) if not left),
-            segments=(*now.segments, segment) if steps else now.segments,
+            segments=segments,
             done=(*now.done, *leaving),
             waiting=now.waiting,
             ledger=now.ledger.plus(entries),
