@@ -28,9 +28,7 @@ def make_modes(omega, decay=None, *, rigid=0, support=None, name="deck plate"):
         omega=omega,
         shape=np.ones((1, len(omega))),
         rigid=np.zeros((1, rigid)),
-        decay=Decay(
-            material=decay, thermoelastic=none, support=none if support is None else support, radiation=none
-        ),
+        decay=Decay(material=decay, thermoelastic=none, support=none if support is None else support, radiation=none),
         residual=none,
         heard=len(omega),
         heard_hz=20e3,
@@ -88,27 +86,32 @@ def make_track(subject, course):
     )
 
 
-def free_bar(length_m, width_m, height_m, *, young_pa, density, below_hz):
-    """Free-free bending of an Euler-Bernoulli bar: omega (m,), shape at x = 0 (m,), mass.
+def free_bar(length_m, width_m, height_m, *, young_pa, density, below_hz, at):
+    """Free-free bending of an Euler-Bernoulli bar: omega (m,), shape (m,) at the share ``at`` of its length, mass.
 
-    cos(b) cosh(b) = 1 (Rao, Mechanical Vibrations, sec. 8.5); at a free end |phi| = 2 / sqrt(mass) exactly.
+    cos(b) cosh(b) = 1 (Rao, Mechanical Vibrations, sec. 8.5), the shape written with exponentials that do not overflow;
+    the mean square of a mode is 1, so that shape / sqrt(mass) is mass-normalised.
     """
     mass = density * length_m * width_m * height_m
-    speed = np.sqrt(young_pa * width_m * height_m**3 / 12.0 / (density * width_m * height_m)) / length_m**2
+    speed = np.sqrt(young_pa * height_m**2 / 12.0 / density) / length_m**2
     count = int(np.sqrt(2.0 * np.pi * below_hz / speed) / np.pi + 1.0)
-    roots = (np.arange(1, count + 1) + 0.5) * np.pi
+    b = (np.arange(1, count + 1) + 0.5) * np.pi
     for _ in range(20):
-        # Newton on cos(b) - 1/cosh(b), written so that nothing overflows.
-        sech = 2.0 * np.exp(-roots) / (1.0 + np.exp(-2.0 * roots))
-        roots -= (np.cos(roots) - sech) / (-np.sin(roots) + sech * np.tanh(roots))
-    omega = roots**2 * speed
+        # Newton on cos(b) - 1/cosh(b).
+        sech = 2.0 * np.exp(-b) / (1.0 + np.exp(-2.0 * b))
+        b -= (np.cos(b) - sech) / (-np.sin(b) + sech * np.tanh(b))
+    # cosh bx + cos bx - s (sinh bx + sin bx) with s = (cosh b - cos b) / (sinh b - sin b), 1 - s written out.
+    small = np.exp(-b)
+    s = (1.0 + small**2 - 2.0 * small * np.cos(b)) / (1.0 - small**2 - 2.0 * small * np.sin(b))
+    less = (np.cos(b) - np.sin(b) - small) / (0.5 * (1.0 - small**2) - small * np.sin(b))
+    growing = 0.5 * less * np.exp(-b * (1.0 - at)) + 0.5 * (1.0 + s) * np.exp(-b * at)
+    shape = growing + np.cos(b * at) - s * np.sin(b * at)
+    omega = b**2 * speed
     keep = omega < 2.0 * np.pi * below_hz
-    return omega[keep], np.full(keep.sum(), 2.0 / np.sqrt(mass)), mass
+    return omega[keep], (shape / np.sqrt(mass))[keep], mass
 
 
 @pytest.fixture
 def kit():
     """The makers above, for tests that cannot import this file."""
-    return SimpleNamespace(
-        modes=make_modes, blow=make_blow, subject=make_subject, track=make_track, bar=free_bar
-    )
+    return SimpleNamespace(modes=make_modes, blow=make_blow, subject=make_subject, track=make_track, bar=free_bar)

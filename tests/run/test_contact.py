@@ -16,7 +16,13 @@ from resonate.run.track import crest
 # at rtol 1e-11: T and F_max T / J with J = 2 m v.
 PULSE_T, PULSE_FORCE = 3.21806546, 1.839547
 # Steel ball of 20 mm, 208 GPa, dropped from 0.1 m on a thick block of the same steel (Johnson 1985, sec. 11.4.1).
-STEEL = {"mass": 7850.0 * np.pi * 0.020**3 / 6.0, "v": 1.40047492, "k": 15238095000.0, "force": 2612.3036, "t": 64.856102e-6}
+STEEL = {
+    "mass": 7850.0 * np.pi * 0.020**3 / 6.0,
+    "v": 1.40047492,
+    "k": 15238095000.0,
+    "force": 2612.3036,
+    "t": 64.856102e-6,
+}
 # Hunt & Crossley (1975) J. Appl. Mech. 42, 440, their relation solved: {mu v: e}.
 HUNT_CROSSLEY = {0.05: 0.9677385785, 0.15: 0.9090157413, 0.5: 0.7484349316, 1.5: 0.487741256}
 RATES_HZ = [48000.0 * 2**k for k in range(10)]
@@ -39,11 +45,17 @@ def stepped(omega, decay, rows, q, v, *, stiffness, mu, step_s, steps, delta=Non
     load = np.zeros(total) if load is None else wide(load)
     force, depth = np.zeros((count, steps)), np.zeros((count, steps + 1))
     work, lost, last_q, last_v = np.zeros(total), np.zeros(count), np.zeros(total), np.zeros(total)
-    last, done = march(
-        *state, table, load, wide(rows), contact, delta, force, depth, work, lost, last_q, last_v
-    )
+    last, done = march(*state, table, load, wide(rows), contact, delta, force, depth, work, lost, last_q, last_v)
     assert done == steps
-    return {"q": state[0][:n], "v": state[1][:n], "force": force, "depth": depth, "lost": lost, "last": last, "work": work[:n]}
+    return {
+        "q": state[0][:n],
+        "v": state[1][:n],
+        "force": force,
+        "depth": depth,
+        "lost": lost,
+        "last": last,
+        "work": work[:n],
+    }
 
 
 def wall(mass, speed, *, stiffness, mu, rate_hz, steps):
@@ -160,12 +172,23 @@ def test_long_random_runs_lose_energy_and_balance():
         # Without loss in the modes, what is gone is gone in the contacts; 44 bits a coefficient, 4000 steps.
         assert abs(before - after - run["lost"].sum()) < 4000 * 1e-13 * before
         assert np.all(run["lost"] >= -1e-15 * before)
-        assert run["work"].sum() == pytest.approx(-run["lost"].sum() - (after - 0.5 * np.sum(run["v"] ** 2 + (omega * run["q"]) ** 2)), abs=1e-11 * before)
+        assert run["work"].sum() == pytest.approx(
+            -run["lost"].sum() - (after - 0.5 * np.sum(run["v"] ** 2 + (omega * run["q"]) ** 2)), abs=1e-11 * before
+        )
 
 
 @pytest.mark.parametrize(
     ("delta", "y"),
-    [(3e-5, 2e-6), (3e-5, -2.9999e-5), (3e-5, -5e-5), (-1e-5, 4e-5), (2e-5, 1e-13), (2e-5, -1e-16), (-1e-5, 5e-6), (0.0, 1e-7)],
+    [
+        (3e-5, 2e-6),
+        (3e-5, -2.9999e-5),
+        (3e-5, -5e-5),
+        (-1e-5, 4e-5),
+        (2e-5, 1e-13),
+        (2e-5, -1e-16),
+        (-1e-5, 5e-6),
+        (0.0, 1e-7),
+    ],
 )
 def test_gradient_is_the_mean_force(delta, y):
     # Mean of K [delta]_+^1.5 over the step, by Gauss's rule from the touch on (the integrand is smooth there).

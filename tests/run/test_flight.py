@@ -22,7 +22,9 @@ def body_spin(turn, spin):
     return np.einsum("tji,tj->ti", matrix(turn), spin)
 
 
-@pytest.mark.parametrize(("height", "time", "speed"), [(1.0, 0.4516007558, 4.428690551), (0.75, 0.3910977268, 3.835358523)])
+@pytest.mark.parametrize(
+    ("height", "time", "speed"), [(1.0, 0.4516007558, 4.428690551), (0.75, 0.3910977268, 3.835358523)]
+)
 def test_free_fall(height, time, speed):
     # h = g t^2 / 2 with the standard acceleration 9.80665 m/s^2 (CGPM 1901).
     start = RigidState(np.array([0.3, height, -1.0]), UP, np.array([2.0, 0.0, 0.0]), NONE)
@@ -63,7 +65,11 @@ def jacobi(inertia, spin, times):
     twice, square = float(np.sum(inertia * spin**2)), float(np.sum((inertia * spin) ** 2))
     assert square > twice * i2
     amplitude = np.sqrt(
-        [(twice * i3 - square) / (i1 * (i3 - i1)), (twice * i3 - square) / (i2 * (i3 - i2)), (square - twice * i1) / (i3 * (i3 - i1))]
+        [
+            (twice * i3 - square) / (i1 * (i3 - i1)),
+            (twice * i3 - square) / (i2 * (i3 - i2)),
+            (square - twice * i1) / (i3 * (i3 - i1)),
+        ]
     )
     pace = np.sqrt((i3 - i2) * (square - twice * i1) / (i1 * i2 * i3))
     m = (i2 - i1) * (twice * i3 - square) / ((i3 - i2) * (square - twice * i1))
