@@ -7,6 +7,7 @@ from itertools import combinations
 from typing import TYPE_CHECKING
 
 import numpy as np
+import scipy.sparse
 
 from resonate.modes.compliance import residual_compliance
 from resonate.run import hertz
@@ -107,13 +108,17 @@ def _patch(spot: SurfaceSpot, radius_m: float) -> Array:
     return np.concatenate((spot.point_m[None], spot.point_m + _RING * radius_m * ring))
 
 
-def _touched(body: Body, spot: SurfaceSpot, radius_m: float) -> Array:
-    """Motion (3, d) of the spot by every freedom."""
+def _touched(body: Body, spots: Sequence[SurfaceSpot], radii_m: Sequence[float]) -> list[Array]:
+    """Motion (3, d) of every spot by every freedom."""
     if body.family == "line":
-        return np.asarray(body.probe(spot.point_m[None]).todense())
-    # Averaged over the pressed patch, so that fine meshes do not make the spot softer.
-    probes = np.asarray(body.probe(_patch(spot, radius_m)).todense()).reshape(len(_WEIGHTS), 3, -1)
-    return np.asarray(np.einsum("p,pad->ad", _WEIGHTS, probes))
+        points, weights = [spot.point_m[None] for spot in spots], np.ones(1)
+    else:
+        # Averaged over the pressed patch, so that fine meshes do not make the spot softer.
+        points, weights = [_patch(spot, size) for spot, size in zip(spots, radii_m, strict=True)], _WEIGHTS
+    rows = body.probe(np.concatenate(points))
+    share = scipy.sparse.kron(weights[None, :], scipy.sparse.eye_array(3))
+    mean = scipy.sparse.kron(scipy.sparse.eye_array(len(spots)), share) @ rows
+    return list(np.asarray(mean.todense()).reshape(len(spots), 3, -1))
 
 
 def _gives(body: Body, modes: ModeSet, rows: Sequence[Array], store: ModeStore | None) -> list[Array]:
@@ -161,11 +166,14 @@ def make_blows(
         )
         for (number, spec), spot in zip(strikes, spots, strict=True)
     ]
-    rows = []
-    for (_, spec), spot, local in zip(strikes, spots, locals_, strict=True):
-        depth = hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m
-        rows.append(_touched(body, spot, local.patch_m(depth)))
-    gives = _gives(body, modes, rows, store) if rows else []
+    if not strikes:
+        return []
+    radii = [
+        local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m)
+        for (_, spec), local in zip(strikes, locals_, strict=True)
+    ]
+    rows = _touched(body, spots, radii)
+    gives = _gives(body, modes, rows, store)
     return [
         Blow(
             strike=number,

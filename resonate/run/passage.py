@@ -79,6 +79,8 @@ class _Run:
     def __init__(self, subject: Subject, state: State, blows: Sequence[Blow]) -> None:
         self.subject = subject
         self.now = _Mark(state, (), (), (), tuple(blows), Ledger.empty())
+        # Where free ringing would go on if no striker came back.
+        self.rest = self.now
         self.marks: dict[int, _Mark] = {}
         self.powers: dict[int, int] = {}
 
@@ -198,24 +200,8 @@ class _Run:
                 )
 
     def _close(self, stepper: Stepper, gone: list[bool]) -> None:
-        """Book a stretch; it ends with the last force if everybody leaves, so that ringing is free again."""
-        now, moving = self.now, stepper.moving
-        steps, q, v = stepper.done, stepper.q, stepper.v
-        if all(gone):
-            steps, q, v = stepper.last, stepper.last_q, stepper.last_v
-        force = np.concatenate(stepper.forces, axis=1)
-        depth = np.concatenate(stepper.depths, axis=1)
-        hits = tuple(
-            window.advanced(
-                hit,
-                moving,
-                number,
-                q,
-                v,
-                window.Piece(now.state.time_s, stepper.step_s, force[number], depth[number]),
-            )
-            for number, hit in enumerate(now.live)
-        )
+        """Book a stretch. When everybody has left, time goes back to the last force: ringing is free from there."""
+        hits = stepper.advanced(self.now.state.time_s)
         leaving = tuple(hit for hit, left in zip(hits, gone, strict=True) if left)
         for hit in leaving:
             power = window.finer(hit)
@@ -223,24 +209,32 @@ class _Run:
                 self.powers[hit.blow.strike] = power
                 self.now = self.marks[hit.blow.strike]
                 return
-        entries = books.stretch(self.subject, moving, q, v, work=stepper.work, lost=stepper.lost)
-        top = float(np.max(moving.omega[: moving.body], initial=0.0))
-        for hit in leaving:
-            held = 0.5 * (hit.stand_v**2 + (window.STAND_IN * top * hit.stand_q) ** 2)
-            kinetic = 0.5 * hit.blow.mass_kg * hit.speed_m_s**2
-            entries = entries.plus(replace(Ledger.empty(), striker_left=kinetic, lost_truncation=held))
-        segments, after = now.segments, now.state
-        if steps:
-            segment, after = self._segment(stepper, force[:, :steps], q, v)
-            segments = (*segments, segment)
-        self.now = _Mark(
-            state=after,
+        here = self._ended(stepper, stepper.done, stepper.q, stepper.v)
+        if stepper.last:
+            rest = self._ended(stepper, stepper.last, stepper.last_q, stepper.last_v)
+            standing = float(np.sum(stepper.moving.stands(stepper.last_q, stepper.last_v)))
+            self.rest = replace(rest, ledger=rest.ledger.plus(replace(Ledger.empty(), lost_truncation=standing)))
+        held = stepper.moving.stands(stepper.q, stepper.v)
+        for hit, left, energy in zip(hits, gone, held, strict=True):
+            if left:
+                kept = replace(Ledger.empty(), striker_left=0.5 * hit.blow.mass_kg * hit.speed_m_s**2)
+                self.rest = replace(self.rest, ledger=self.rest.ledger.plus(kept))
+                here = replace(
+                    here, ledger=here.ledger.plus(kept).plus(replace(kept, striker_left=0.0, lost_truncation=energy))
+                )
+        self.now = replace(
+            self.rest if all(gone) else here,
             live=tuple(hit for hit, left in zip(hits, gone, strict=True) if not left),
-            segments=segments,
-            done=(*now.done, *leaving),
-            waiting=now.waiting,
-            ledger=now.ledger.plus(entries),
+            done=(*self.now.done, *leaving),
+            waiting=self.now.waiting,
         )
+
+    def _ended(self, stepper: Stepper, steps: int, q: Array, v: Array) -> _Mark:
+        """Where a stretch is after some of its steps, in state ``q``, ``v``."""
+        now = self.now
+        segment, after = self._segment(stepper, np.concatenate(stepper.forces, axis=1)[:, :steps], q, v)
+        entries = books.stretch(self.subject, stepper.moving, q, v, work=stepper.work, lost=stepper.lost)
+        return replace(now, state=after, segments=(*now.segments, segment), ledger=now.ledger.plus(entries))
 
     def _segment(self, stepper: Stepper, force: Array, q: Array, v: Array) -> tuple[Segment, State]:
         subject, state, body = self.subject, self.now.state, stepper.moving.body

@@ -32,7 +32,7 @@ _QUIET_S, _QUIET_STEPS, _SAFE_S = 50e-6, 20, 0.5e-3
 # A contact that lasts longer than this is no strike.
 LONGEST_S = 0.5
 # Missing modes are carried by one heavily damped mode at this multiple of the highest solved one.
-STAND_IN, _STAND_IN_ZETA = 2.0, 0.7
+_STAND_IN, _STAND_IN_ZETA = 2.0, 0.7
 # Time marched before the state is looked at, and least number of steps.
 _CHUNK_S, _CHUNK_STEPS = 1e-4, 32
 
@@ -91,10 +91,15 @@ class Moving:
     body: int
     elastic: NDArray[np.bool_]
 
+    def stands(self, q: Array, v: Array) -> Array:
+        """Energy (k,) that the stand-ins hold in a state, J."""
+        at = slice(self.body, self.body + 2 * len(self.rows), 2)
+        return np.asarray(0.5 * (v[at] ** 2 + (self.omega[at] * q[at]) ** 2))
+
 
 def stand_in(give_m_n: float, top_omega: float) -> tuple[float, float, float]:
     """Frequency, decay and gain of the mode that carries a missing compliance."""
-    omega = STAND_IN * top_omega
+    omega = _STAND_IN * top_omega
     return omega, _STAND_IN_ZETA * omega, omega * float(np.sqrt(give_m_n))
 
 
@@ -160,6 +165,25 @@ class Stepper:
         self.done += steps
         self.forces.append(force)
         self.depths.append(depth[:, 1:])
+
+    def advanced(self, begin_s: float) -> tuple[Hit, ...]:
+        """The hits at the end of the stretch, which began at ``begin_s``."""
+        force, depth = np.concatenate(self.forces, axis=1), np.concatenate(self.depths, axis=1)
+        found = []
+        for number, hit in enumerate(self.hits):
+            stand = self.moving.body + 2 * number
+            piece = Piece(begin_s, self.step_s, force[number], depth[number])
+            found.append(
+                replace(
+                    hit,
+                    speed_m_s=float(self.v[stand + 1]) / float(np.sqrt(hit.blow.mass_kg)),
+                    penetration_m=float(self.delta[number]),
+                    stand_q=float(self.q[stand]),
+                    stand_v=float(self.v[stand]),
+                    pieces=(*hit.pieces, piece),
+                )
+            )
+        return tuple(found)
 
     def quiet_s(self, number: int) -> float:
         """How long contact ``number`` has been without force, s; its earlier pieces count too."""
@@ -229,16 +253,3 @@ def finer(hit: Hit) -> int:
 def chunk(step_s: float) -> int:
     """Steps marched before the state is looked at."""
     return max(_CHUNK_STEPS, int(np.ceil(_CHUNK_S / step_s)))
-
-
-def advanced(hit: Hit, moving: Moving, number: int, q: Array, v: Array, piece: Piece) -> Hit:
-    """Take a hit to the end of a stretch with state ``q``, ``v``."""
-    stand = moving.body + 2 * number
-    return replace(
-        hit,
-        speed_m_s=float(v[stand + 1]) / float(np.sqrt(hit.blow.mass_kg)),
-        penetration_m=float(piece.depth_m[-1]),
-        stand_q=float(q[stand]),
-        stand_v=float(v[stand]),
-        pieces=(*hit.pieces, piece),
-    )
