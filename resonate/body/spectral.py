@@ -52,12 +52,18 @@ def _to_nodal(order: int) -> Array:
     return np.asarray(np.linalg.inv(np.polynomial.legendre.legvander(nodes, order)), dtype=np.float64)
 
 
+@cache
+def _slope_of(degree: int) -> Array:
+    """Legendre coefficients of the derivative of the Legendre polynomial of a degree."""
+    return np.asarray(np.polynomial.legendre.legder([0.0] * degree + [1.0]), dtype=np.float64)
+
+
 def lagrange(order: int, points: Array) -> tuple[Array, Array]:
     """Nodal polynomials and their slopes, each (points, order + 1), at ``points`` in [-1, 1]."""
     modal = np.polynomial.legendre.legvander(points, order)
     slopes = np.zeros_like(modal)
     for degree in range(1, order + 1):
-        slopes[:, degree] = np.polynomial.legendre.Legendre.basis(degree).deriv()(points)
+        slopes[:, degree] = np.polynomial.legendre.legval(points, _slope_of(degree))
     change = _to_nodal(order)
     return modal @ change, slopes @ change
 
