@@ -12,7 +12,7 @@ ROOT = Path(__file__).resolve().parents[2]
 PACKAGE = ROOT / "resonate"
 
 # Data flows one way: a room imports rooms to its left, itself, and the errors.
-ROOMS = "scene body modes field run sound motion infer take vary cli".split()
+ROOMS = ["scene", "body", "modes", "field", "run", "sound", "motion", "infer", "take", "vary", "cli"]
 FRONT = ("__init__.py", "__main__.py")
 MOST_LINES = 400
 HOMELESS = {"util", "utils", "misc", "helper", "helpers", "common", "base", "tools", "shared", "stuff", "general"}
@@ -152,10 +152,7 @@ def test_nothing_but_the_house_lies_on_the_top_floor():
 # Spelt backwards, so that this file does not hold what it looks for.
 WORDS = [
     word[::-1]
-    for word in (
-        "erutcel tpircsnart rotcurtsni rehcaet tnemngissa krowemoh rotut tnega tnatsissa tneduts "
-        "tekcit tnirps odot emxif tpmorp tpgtahc edualc ledom_egaugnal revodnah reweiver"
-    ).split()
+    for word in ["erutcel", "tpircsnart", "rotcurtsni", "rehcaet", "tnemngissa", "krowemoh", "rotut", "tnega", "tnatsissa", "tneduts", "tekcit", "tnirps", "odot", "emxif", "tpmorp", "tpgtahc", "edualc", "ledom_egaugnal", "revodnah", "reweiver"]
 ]
 PLACES = [
     r"(?<![\w.])/(?:work|root|home|Users|mnt|media|opt|srv|tmp)/",  # somebody's own folders
