@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import io
 import json
+import os
 import sys
 import traceback
+from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -14,52 +17,69 @@ from resonate import __version__
 from resonate.errors import ResonateError
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Iterable
+    from collections.abc import Callable, Iterable, Iterator
 
     from resonate.modes.modeset import ModeSet
 
 _OUR_DEFECT = 3
 _INTERRUPTED = 130
+_ROWS = 24
+_WARNING = "warning: "
 _SCENE = click.argument("scene", type=click.Path(path_type=Path))
 _JSON = click.option("--json", "as_json", is_flag=True, help="Print JSON instead of a table.")
 
 
 def main(arguments: list[str] | None = None) -> None:
     """Run a command and turn every outcome into an exit code: 0 fine, 1 fault, 2 bad input, 3 our defect."""
-    given = sys.argv[1:] if arguments is None else arguments
+    given = sys.argv[1:] if arguments is None else list(arguments)
     debug = "--debug" in given
+    # A terminal that lacks a letter shows its code instead of stopping the command.
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")
     try:
-        commands(given, prog_name="resonate", standalone_mode=False)
-    except ResonateError as error:
-        if debug:
-            traceback.print_exc()
-        click.echo(str(error), err=True)
-        sys.exit(error.exit_code)
-    except click.ClickException as error:
-        error.show()
-        sys.exit(error.exit_code)
+        commands([word for word in given if word != "--debug"], prog_name="resonate", standalone_mode=False)
+        sys.stdout.flush()
     except (KeyboardInterrupt, click.Abort):
         click.echo("stopped", err=True)
         sys.exit(_INTERRUPTED)
     except click.exceptions.Exit as leaving:
         sys.exit(leaving.exit_code)
     except BrokenPipeError:
-        sys.stderr.close()
+        # Whoever read our results has seen enough. The interpreter must not try to write the rest at its end.
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         sys.exit(0)
     except Exception as error:  # noqa: BLE001 (the last door: whatever is left is our defect)
         if debug:
             traceback.print_exc()
-        click.echo(f"resonate has a defect: {type(error).__name__}: {error}", err=True)
-        click.echo("  fix:  run it again with --debug and report what it prints, with the scene", err=True)
-        sys.exit(_OUR_DEFECT)
+        sys.exit(_explain(error))
+
+
+def _explain(error: Exception) -> int:
+    """Say on stderr what is wrong, where, and how to fix it; the exit code."""
+    if isinstance(error, click.ClickException):
+        error.show()
+        return error.exit_code
+    if isinstance(error, MemoryError):
+        error = ResonateError(
+            what=f"there is not enough memory: {error}" if str(error) else "there is not enough memory",
+            where="the take as a whole",
+            fix="shorten take.length, lower sound.rate, or use fewer microphones",
+        )
+    if isinstance(error, ResonateError):
+        click.echo(str(error), err=True)
+        return error.exit_code
+    click.echo(f"resonate has a defect: {type(error).__name__}: {error}", err=True)
+    click.echo("  fix:  run it again with --debug and report what it prints, with the scene", err=True)
+    return _OUR_DEFECT
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
 @click.version_option(__version__, prog_name="resonate")
-@click.option("--debug", is_flag=True, help="Show the traceback of an error.")
+@click.option("--debug", is_flag=True, help="Show the traceback of an error; may stand anywhere.")
 def commands(*, debug: bool) -> None:
     """One physical simulation, turned into sound and motion that stay in step."""
-    del debug  # looked at by main, wherever it stands
+    del debug  # main has taken it out
 
 
 @commands.command()
@@ -95,7 +115,12 @@ def _summary(path: Path) -> Iterable[str]:
 @commands.command()
 @_SCENE
 @_JSON
-def modes(scene: Path, *, as_json: bool) -> None:
+@click.option(
+    "--most",
+    type=click.IntRange(min=1),
+    help=f"List this many modes of each body, from the lowest  [default: {_ROWS} in a table, all in JSON]",
+)
+def modes(scene: Path, *, as_json: bool, most: int | None) -> None:
     """List the modes of every body of SCENE: frequency, decay, and what damps each."""
     from resonate.body.build import build_body
     from resonate.modes.solve import solve_modes
@@ -115,16 +140,17 @@ def modes(scene: Path, *, as_json: bool) -> None:
                 tell(f"warning: {note}")
             found.append((body.inertia.mass_kg, solved))
     if as_json:
-        click.echo(json.dumps({"bodies": [_listed(mass, solved) for mass, solved in found]}, indent=2))
+        click.echo(json.dumps({"bodies": [_listed(mass, solved, most=most) for mass, solved in found]}, indent=2))
         return
     for mass, solved in found:
-        _print_modes(mass, solved)
+        _print_modes(mass, solved, most=most or _ROWS)
 
 
-def _listed(mass_kg: float, solved: ModeSet) -> dict[str, Any]:
+def _listed(mass_kg: float, solved: ModeSet, *, most: int | None) -> dict[str, Any]:
     decay, t60 = solved.decay, solved.t60_s
     rows = []
-    for number, index in enumerate(range(solved.swing, solved.count), 1):
+    # Slow swinging on springs and cords is motion as a whole, not a mode.
+    for number, index in enumerate(range(solved.swing, solved.count)[:most], 1):
         causes = ("material", "thermoelastic", "support", "radiation")
         rows.append(
             {
@@ -137,22 +163,26 @@ def _listed(mass_kg: float, solved: ModeSet) -> dict[str, Any]:
     return {"name": solved.body, "mass_kg": mass_kg, "modes": rows}
 
 
-def _print_modes(mass_kg: float, solved: ModeSet) -> None:
+def _print_modes(mass_kg: float, solved: ModeSet, *, most: int) -> None:
     from rich.table import Table
 
-    facts = _listed(mass_kg, solved)
-    heard = solved.heard - solved.swing
-    rigid = solved.rigid.shape[1]
-    title = f"{facts['name']}: {mass_kg:.4g} kg, {len(facts['modes'])} modes ({heard} heard), {rigid} rigid motions"
+    facts = _listed(mass_kg, solved, most=most)
+    count, heard = solved.count - solved.swing, solved.heard - solved.swing
+    title = f"{facts['name']}: {mass_kg:.4g} kg, {count} modes ({heard} heard), {solved.rigid.shape[1]} rigid motions"
     table = Table("mode", "Hz", "T60 s", "material", "thermoelastic", "support", "radiation", title=title)
     for column in table.columns:
         column.justify = "right"
     for row in facts["modes"]:
         t60 = "-" if row["t60_s"] is None else f"{row['t60_s']:.3g}"
-        causes = [f"{value:.3g}" for value in row["damping"].values()]
+        total = sum(row["damping"].values())
+        # Rounding is not a cause.
+        causes = [f"{value:.3g}" if value > 1e-9 * total else "0" for value in row["damping"].values()]
         table.add_row(str(row["number"]), f"{row['frequency_hz']:.2f}", t60, *causes)
     table.caption = "damping as decay rates, 1/s: amplitudes fall as exp(-rate t)"
     _print_table(table)
+    left = count - len(facts["modes"])
+    if left:
+        click.echo(f"and {left} more, up to {solved.frequency_hz[-1]:.0f} Hz: --most {count} or --json lists all")
 
 
 def _print_table(table: Any) -> None:  # noqa: ANN401 (rich is imported late)
@@ -174,7 +204,7 @@ def presets(kind: str | None, *, as_json: bool) -> None:
     if kind is None:
         everything = {name: [preset.name for preset in list_presets(name)] for name in ("materials", "strikers")}
         if as_json:
-            click.echo(json.dumps(everything, indent=2, ensure_ascii=False))
+            click.echo(json.dumps(everything, indent=2))
             return
         for name, names in everything.items():
             click.echo(f"{name} ({len(names)}): {', '.join(names)}")
@@ -192,11 +222,12 @@ def presets(kind: str | None, *, as_json: bool) -> None:
 
 @commands.command()
 @click.argument("name", type=click.Path(path_type=Path))
-def new(name: Path) -> None:
+@click.option("--from", "origin", metavar="EXAMPLE", help="Begin with a copy of an example, such as galley_rack.")
+def new(name: Path, origin: str | None) -> None:
     """Write a commented scene NAME.toml to start from; an existing file is never touched."""
     from resonate.scene.starter import write_starter
 
-    click.echo(str(write_starter(name)))
+    click.echo(str(write_starter(name, origin=origin)))
 
 
 @commands.command()
@@ -233,27 +264,20 @@ def play(what: Path, gain_db: float) -> None:
         play_path(what, gain_db=gain_db, progress=tell)
 
 
-class _telling:  # noqa: N801 (reads as what it does)
+@contextmanager
+def _telling() -> Iterator[Callable[[str], None]]:
     """Progress on stderr: a live line on a terminal, only warnings otherwise."""
+    if not sys.stderr.isatty():
+        yield lambda words: _warn(words) if words.startswith(_WARNING) else None
+        return
+    from rich.console import Console
 
-    def __enter__(self) -> Callable[[str], None]:
-        self._status: Any = None
-        if sys.stderr.isatty():
-            from rich.console import Console
+    with Console(stderr=True).status("reading") as status:
+        yield lambda words: _warn(words) if words.startswith(_WARNING) else status.update(words)
 
-            self._status = Console(stderr=True).status("reading")
-            self._status.start()
-        return self._tell
 
-    def _tell(self, words: str) -> None:
-        if words.startswith("warning: "):
-            click.echo(words, err=True)
-        elif self._status is not None:
-            self._status.update(words)
-
-    def __exit__(self, *_: object) -> None:
-        if self._status is not None:
-            self._status.stop()
+def _warn(words: str) -> None:
+    click.echo(words, err=True)
 
 
 if __name__ == "__main__":

@@ -23,12 +23,12 @@ KINDS: Final[tuple[Kind, ...]] = ("materials", "strikers")
 _SINGULAR: Final = {"materials": "material", "strikers": "striker"}
 
 
-def data_dir() -> Traversable:
-    """Folder of the preset files: inside the installed package, else in the checkout."""
-    installed = resources.files("resonate") / "presets"
+def data_dir(kind: Literal["presets", "examples"] = "presets") -> Traversable:
+    """Folder of the files that travel with the package: inside it when installed, else in the checkout."""
+    installed = resources.files("resonate") / kind
     if installed.is_dir():
         return installed
-    return Path(__file__).resolve().parents[2] / "presets"
+    return Path(__file__).resolve().parents[2] / kind
 
 
 @cache

@@ -5,9 +5,13 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from resonate.errors import SceneError
+from resonate.scene.names import choose
+from resonate.scene.presets import data_dir
 
 if TYPE_CHECKING:
     from pathlib import Path
+
+_MOST_TITLE = 200
 
 STARTER = """\
 # A scene for resonate. Bare numbers are SI; text may carry a unit: "3 mm", "2.5 m/s", "20 degC".
@@ -55,19 +59,32 @@ place = ["160 mm", "1.6 m", "0.5 m"]
 """
 
 
-def write_starter(name: Path) -> Path:
+def examples() -> tuple[str, ...]:
+    """Names of the example scenes that travel with the package."""
+    found = (entry.name for entry in data_dir("examples").iterdir())
+    return tuple(sorted(name.removesuffix(".toml") for name in found if name.endswith(".toml")))
+
+
+def write_starter(name: Path, *, origin: str | None = None) -> Path:
     """Write the starter as ``name`` (``.toml`` is added) and return its path.
+
+    Parameters
+    ----------
+    name : Path
+        Where to write.
+    origin : str, optional
+        The example to copy, word for word; the starter without it.
 
     Raises
     ------
     SceneError
-        If the file exists or cannot be written.
+        If there is no such example, or the file exists or cannot be written.
     """
     path = name if name.suffix == ".toml" else name.with_name(name.name + ".toml")
-    title = path.stem.replace("\\", " ").replace('"', "'").strip() or "take"
+    text = _text(path.stem) if origin is None else _example(origin)
     try:
         with path.open("x", encoding="utf-8", newline="\n") as file:
-            file.write(STARTER.format(title=title))
+            file.write(text)
     except FileExistsError:
         raise SceneError(
             what="a file of this name exists and is kept", where=str(path), fix="choose another name"
@@ -79,3 +96,16 @@ def write_starter(name: Path) -> Path:
             fix="choose a folder that exists and may be written to",
         ) from None
     return path
+
+
+def _text(title: str) -> str:
+    plain = "".join(letter for letter in title if letter.isprintable()).replace("\\", " ").replace('"', "'")
+    return STARTER.format(title=plain.strip()[:_MOST_TITLE] or "take")
+
+
+def _example(origin: str) -> str:
+    known = examples()
+    name = origin.removesuffix(".toml")
+    if name not in known:
+        raise SceneError(what=f"{origin!r} is not an example", where="--from", fix=choose(name, known))
+    return (data_dir("examples") / f"{name}.toml").read_text(encoding="utf-8")

@@ -35,7 +35,7 @@ def guarded(samples: Array, rate_hz: int, *, gain_db: float) -> Array:
     Parameters
     ----------
     samples : Array
-        (n, c) of any scale.
+        (n, c) of any scale; what is not a finite number is silence.
     rate_hz : int
         Sample rate.
     gain_db : float
@@ -44,14 +44,16 @@ def guarded(samples: Array, rate_hz: int, *, gain_db: float) -> Array:
     Returns
     -------
     Array
-        (n, at most 2) float, at most ``CEILING_DB``; the first 30 ms fade in.
+        (n, at most 2) float, at most ``CEILING_DB``; the first 30 ms fade in from silence.
     """
+    finite = np.where(np.isfinite(samples), samples, 0.0)[:, :_STEREO]
+    peak = float(np.max(np.abs(finite), initial=0.0))
+    # Divided before anything else: the level of very small samples would be too large a number.
+    even = finite / peak if peak > 0.0 else finite
+    ramp = np.minimum(1.0, np.arange(len(even)) / (_RAMP_S * rate_hz))
     ceiling = 10.0 ** (CEILING_DB / 20.0)
-    peak = float(np.max(np.abs(samples), initial=0.0))
-    level = 10.0 ** ((START_DB + gain_db) / 20.0) / peak if peak > 0.0 else 0.0
-    quiet = samples[:, :_STEREO] * level
-    ramp = np.minimum(1.0, np.arange(len(quiet)) / (_RAMP_S * rate_hz))
-    return np.asarray(ceiling * np.tanh(quiet * ramp[:, None] / ceiling))
+    level = 10.0 ** ((START_DB + gain_db) / 20.0)
+    return np.asarray(ceiling * np.tanh(even * ramp[:, None] * (level / ceiling)))
 
 
 def _device() -> ModuleType:
@@ -61,8 +63,8 @@ def _device() -> ModuleType:
         raise TakeError(
             what=f"no sound system: {error}",
             where="play",
-            fix="install PortAudio (Debian and Ubuntu: apt install libportaudio2; Fedora: dnf install portaudio), "
-            "or open the WAV of a take in any player",
+            fix="install PortAudio (Debian and Ubuntu: apt install libportaudio2; Fedora: dnf install portaudio; "
+            "macOS: brew install portaudio), or open the WAV of a take in any player",
         ) from None
     module: ModuleType = sounddevice
     return module
@@ -70,13 +72,7 @@ def _device() -> ModuleType:
 
 def _samples(path: Path, progress: Callable[[str], None]) -> tuple[Array, int]:
     if path.is_dir():
-        import soundfile
-
-        wave = path / f"{path.name}.wav"
-        if not wave.exists():
-            raise TakeError(what="the take holds no WAV", where=str(path), fix='write one with files = ["wav", ...]')
-        samples, rate = soundfile.read(wave, always_2d=True, dtype="float64")
-        return samples, int(rate)
+        return _samples_of_take(path)
     from resonate.modes.store import default_store
     from resonate.scene.read import read_scene
     from resonate.sound.render import render
@@ -86,6 +82,29 @@ def _samples(path: Path, progress: Callable[[str], None]) -> tuple[Array, int]:
     ran = run_scene(scene, store=default_store(), progress=progress)
     sound = render(ran.record, transfers_of(scene, ran), scene)
     return sound.pressure_pa, int(sound.rate_hz)
+
+
+def _samples_of_take(folder: Path) -> tuple[Array, int]:
+    import soundfile
+
+    # A renamed folder keeps the names of its files.
+    waves = sorted(folder.glob("*.wav"))
+    if len(waves) != 1:
+        found = "no WAV" if not waves else f"{len(waves)} WAV files"
+        raise TakeError(
+            what=f"the folder holds {found}",
+            where=str(folder),
+            fix='name the folder of a take that was made with files = ["wav", ...], or a scene',
+        )
+    try:
+        samples, rate = soundfile.read(waves[0], always_2d=True, dtype="float64")
+    except (soundfile.SoundFileError, OSError) as error:
+        raise TakeError(
+            what=f"the sound cannot be read: {error}",
+            where=str(waves[0]),
+            fix="make the take again with --replace",
+        ) from error
+    return samples, int(rate)
 
 
 def play_path(path: Path, *, gain_db: float, progress: Callable[[str], None]) -> None:
