@@ -7,7 +7,7 @@ import pytest
 from scipy.optimize import root
 
 from resonate.run import hertz
-from resonate.run.kernels.force import gradient, pressed, settle, solve
+from resonate.run.kernels.force import bracketed, gradient, pressed, settle, solve
 from resonate.run.kernels.march import fold, march
 from resonate.run.propagator import coefficients
 from resonate.run.track import crest
@@ -207,8 +207,11 @@ def test_single_contact_solves_its_equation():
     for _ in range(5000):
         stiffness, loss = 10.0 ** rng.uniform(4, 12), 10.0 ** rng.uniform(2, 7)
         give, delta, y_free = 10.0 ** rng.uniform(-12, -6), rng.uniform(-1, 1) * 1e-4, rng.uniform(-1, 1) * 1e-4
-        force = solve(delta, y_free, give, stiffness, loss)
+        force = solve(delta, y_free, give, stiffness, loss, rng.choice([0.0, 10.0 ** rng.uniform(-3, 4)]))
         assert force >= 0.0
+        assert bracketed(delta, y_free, give, stiffness, loss) == pytest.approx(
+            force, rel=1e-9, abs=1e-12 * gradient(delta, y_free - give * force, stiffness)
+        )
         # y - y_free + C F(y) rises through zero within a hair of the y that this force leaves.
         y = y_free - give * force
         hair = 3e-14 * (abs(y_free) + give * force) + 1e-15 * (abs(delta) + give * gradient(delta, y, stiffness))
