@@ -69,28 +69,32 @@ def march(
     force was not found.
     """
     n, count = q.shape[0], rows.shape[0]
-    w2, c, d, g = step[0], step[1], step[2], step[3]
-    give = np.zeros((count, count))
-    rest, ahead, pushed, part = np.zeros(n), np.zeros(n), np.zeros(n), np.zeros(n)
-    y_free, now = np.zeros(count), np.zeros(count)
+    # All in one block, rows an odd number of 512 bytes apart: rows a multiple of 4096 apart would slow one another.
+    space = np.zeros((12 + count, ((n + 63) // 64 | 1) * 64))
+    x, u, w2, c, d, g = space[0, :n], space[1, :n], space[2, :n], space[3, :n], space[4, :n], space[5, :n]
+    pull, rest, ahead, pushed = space[6, :n], space[7, :n], space[8, :n], space[9, :n]
+    done, part, gains = space[10, :n], space[11, :n], space[12:, :n]
+    x[:], u[:], pull[:], gains[:] = q, v, load, rows
+    w2[:], c[:], d[:], g[:] = step[0], step[1], step[2], step[3]
+    give, y_free, now = np.zeros((count, count)), np.zeros(count), np.zeros(count)
     for j in range(count):
         for k in range(count):
             for i in range(n):
-                part[i] = rows[j, i] * c[i] * rows[k, i]
+                part[i] = gains[j, i] * c[i] * gains[k, i]
             give[j, k] = fold(part)
     for i in range(n):
-        rest[i] = load[i] - w2[i] * q[i]
-        ahead[i] = c[i] * rest[i] + d[i] * v[i]
-    last = 0
-    for at in range(force.shape[1]):
+        rest[i] = pull[i] - w2[i] * x[i]
+        ahead[i] = c[i] * rest[i] + d[i] * u[i]
+    last, at = 0, 0
+    while at < force.shape[1]:
         for j in range(count):
-            row = rows[j]
+            row = gains[j]
             for i in range(n):
                 part[i] = row[i] * ahead[i]
             y_free[j] = -fold(part)
             depth[j, at] = delta[j]
         if not settle(delta, y_free, give, contact[0], contact[1], now):
-            return last, at
+            break
         acting = False
         for j in range(count):
             force[j, at] = now[j]
@@ -100,37 +104,37 @@ def march(
                 y -= give[j, k] * now[k]
             lost[j] += (now[j] - gradient(delta[j], y, contact[0, j])) * y
             delta[j] += y
-        if not acting:
+        if acting:
+            row, size = gains[0], now[0]
+            for i in range(n):
+                pushed[i] = row[i] * size
+            for j in range(1, count):
+                row, size = gains[j], now[j]
+                for i in range(n):
+                    pushed[i] += row[i] * size
+            for i in range(n):
+                moved = ahead[i] + c[i] * pushed[i]
+                u[i] += d[i] * (rest[i] + pushed[i]) - g[i] * u[i]
+                done[i] += pushed[i] * moved
+                x[i] += moved
+                rest[i] = pull[i] - w2[i] * x[i]
+                ahead[i] = c[i] * rest[i] + d[i] * u[i]
+            last = at + 1
+        else:
             if last == at:
-                last_q[:] = q
-                last_v[:] = v
+                last_q[:], last_v[:] = x, u
             for i in range(n):
-                v[i] += d[i] * rest[i] - g[i] * v[i]
-                q[i] += ahead[i]
-                rest[i] = load[i] - w2[i] * q[i]
-                ahead[i] = c[i] * rest[i] + d[i] * v[i]
-            continue
-        row, size = rows[0], now[0]
-        for i in range(n):
-            pushed[i] = row[i] * size
-        for j in range(1, count):
-            row, size = rows[j], now[j]
-            for i in range(n):
-                pushed[i] += row[i] * size
-        for i in range(n):
-            moved = ahead[i] + c[i] * pushed[i]
-            v[i] += d[i] * (rest[i] + pushed[i]) - g[i] * v[i]
-            work[i] += pushed[i] * moved
-            q[i] += moved
-            rest[i] = load[i] - w2[i] * q[i]
-            ahead[i] = c[i] * rest[i] + d[i] * v[i]
-        last = at + 1
-    if last == force.shape[1]:
-        last_q[:] = q
-        last_v[:] = v
-    for j in range(count):
-        depth[j, force.shape[1]] = delta[j]
-    return last, force.shape[1]
+                u[i] += d[i] * rest[i] - g[i] * u[i]
+                x[i] += ahead[i]
+                rest[i] = pull[i] - w2[i] * x[i]
+                ahead[i] = c[i] * rest[i] + d[i] * u[i]
+        at += 1
+    q[:], v[:] = x, u
+    work += done
+    if last == at:
+        last_q[:], last_v[:] = x, u
+    depth[:, at] = delta
+    return last, at
 
 
 @compiled
