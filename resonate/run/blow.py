@@ -108,6 +108,14 @@ def _patch(spot: SurfaceSpot, radius_m: float) -> Array:
     return np.concatenate((spot.point_m[None], spot.point_m + _RING * radius_m * ring))
 
 
+def _stepped(radius_m: float) -> float:
+    """Nearest of a ladder of radii, so that strikes of slightly different speed share what is kept of a spot.
+
+    Two rungs an octave: the mean over a plate depends on the logarithm of the radius alone.
+    """
+    return float(2.0 ** (0.5 * np.round(2.0 * np.log2(radius_m))))
+
+
 def _touched(body: Body, spots: Sequence[SurfaceSpot], radii_m: Sequence[float]) -> list[Array]:
     """Motion (3, d) of every spot by every freedom."""
     if body.family == "line":
@@ -126,10 +134,13 @@ def _gives(body: Body, modes: ModeSet, rows: Sequence[Array], store: ModeStore |
     if not modes.count:
         return [np.zeros((3, 3)) for _ in rows]
     pairs = list(combinations(range(3), 2))
-    asked = [np.concatenate((three, [three[a] + three[b] for a, b in pairs])) for three in rows]
-    answers = residual_compliance(body, modes, np.concatenate(asked), store=store).reshape(len(rows), 6)
+    # Strikes on the same spot ask once.
+    spots = {three.tobytes(): three for three in rows}
+    asked = [np.concatenate((three, [three[a] + three[b] for a, b in pairs])) for three in spots.values()]
+    answers = residual_compliance(body, modes, np.concatenate(asked), store=store).reshape(len(spots), 6)
+    by_spot = dict(zip(spots, answers, strict=True))
     found = []
-    for answer in answers:
+    for answer in (by_spot[three.tobytes()] for three in rows):
         give = np.diag(answer[:3])
         for (a, b), both in zip(pairs, answer[3:], strict=True):
             give[a, b] = give[b, a] = 0.5 * (both - answer[a] - answer[b])
@@ -169,7 +180,7 @@ def make_blows(
     if not strikes:
         return []
     radii = [
-        local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m)
+        _stepped(local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m))
         for (_, spec), local in zip(strikes, locals_, strict=True)
     ]
     rows = _touched(body, spots, radii)

@@ -131,7 +131,8 @@ class BodyTrack:
         found = np.zeros((self.modes.count, len(times)), dtype=np.complex128)
         places = self._places(times)
         for number in np.unique(places):
-            at = np.flatnonzero(places == number)
+            # At rest before the run.
+            at = np.flatnonzero((places == number) & (times >= self.begins_s[0]))
             found[:, at] = self._elastic(int(number), times[at])
         return found
 
@@ -144,7 +145,7 @@ class BodyTrack:
             return found
         places = self._places(times)
         for number in np.unique(places):
-            at, segment = np.flatnonzero(places == number), self.segments[number]
+            at, segment = np.flatnonzero((places == number) & (times >= self.begins_s[0])), self.segments[number]
             state = segment.z[self.modes.count :]
             since = times[at] - segment.begin_s
             found[:, at] = state.real[:, None] + state.imag[:, None] * since

@@ -158,7 +158,7 @@ def test_impulse_force_and_peak_of_a_track(kit):
 
 # Zener (1941) Phys. Rev. 59, 669: a ball on a large thin plate; sigma'' + (1 + lambda d/dtau) sigma^1.5 = 0 integrated
 # by DOP853: restitution and contact time.
-ZENER = {"lambda": 0.57064627, "e": 0.388809, "time_s": 53.26951e-6}
+ZENER = {"lambda": 0.57064627, "time_s": 53.26951e-6}
 
 
 def navier(a, b, x, z, *, bending, sheet, below_hz):
@@ -173,26 +173,32 @@ def navier(a, b, x, z, *, bending, sheet, below_hz):
     return omega[order], gain[order]
 
 
-def test_ball_on_a_large_glass_plate(kit):
+# Zener's equation for other masses, {lambda: e}, integrated the same way.
+ZENER_TABLE = {0.25: 0.657654676, 0.57064627: 0.388809, 1.0: 0.184122874}
+
+
+@pytest.mark.parametrize(("number", "restitution"), ZENER_TABLE.items())
+def test_ball_on_a_large_glass_plate(kit, number, restitution):
     # 10 mm steel ball, 1 m/s, 4 mm glass: 208 GPa, 0.3, 7850 and 70 GPa, 0.22, 2500 kg/m^3.
     bending, sheet = 70e9 * 0.004**3 / 12.0 / (1.0 - 0.22**2), 2500.0 * 0.004
     mass = 7850.0 * np.pi * 0.01**3 / 6.0
     stiffness = 4.0 / 3.0 / ((1.0 - 0.3**2) / 208e9 + (1.0 - 0.22**2) / 70e9) * np.sqrt(0.005)
     # Driving-point impedance of the infinite plate 8 sqrt(D rho h): Zener's parameter.
-    time = (mass / stiffness) ** 0.4
-    assert mass / (8.0 * np.sqrt(bending * sheet) * time) == pytest.approx(ZENER["lambda"], rel=1e-6)
+    impedance = 8.0 * np.sqrt(bending * sheet)
+    assert mass / (impedance * (mass / stiffness) ** 0.4) == pytest.approx(ZENER["lambda"], rel=1e-6)
+    # The parameter goes with mass^(3/5): a lighter or heavier ball of the same radius.
+    mass *= (number / ZENER["lambda"]) ** (5.0 / 3.0)
     omega, gain = navier(0.55, 0.47, 0.26, 0.22, bending=bending, sheet=sheet, below_hz=400e3)
     blow = kit.blow(gain, mass_kg=mass, stiffness=stiffness, speed_m_s=1.0)
-    subject = kit.subject(kit.modes(omega))
-    course = follow(subject, [blow], end_s=1e-3)
+    course = follow(kit.subject(kit.modes(omega)), [blow], end_s=1e-3)
     event = course.events[0]
-    left = np.sqrt(2.0 * course.ledger.striker_left / mass)
-    print(
-        f"{len(omega)} modes: restitution {left:.4f} for {ZENER['e']:.4f}, contact {1e6 * (event.end_s - event.begin_s):.2f} us"
-    )
-    # Missing modes above 400 kHz and the plate's size leave 1 %.
-    assert left == pytest.approx(ZENER["e"], rel=1e-2)
-    assert event.end_s - event.begin_s == pytest.approx(ZENER["time_s"], rel=1e-2)
+    left, time_s = np.sqrt(2.0 * course.ledger.striker_left / mass), event.end_s - event.begin_s
+    print(f"lambda {number}: {len(omega)} modes, restitution {left:.4f} for {restitution:.4f}, {1e6 * time_s:.2f} us")
+    # Modes above 400 kHz are missing: 0.4 % of the striker's speed.
+    assert left == pytest.approx(restitution, abs=4e-3)
+    if number == ZENER["lambda"]:
+        assert left == pytest.approx(restitution, rel=1e-2)
+        assert time_s == pytest.approx(ZENER["time_s"], rel=1e-2)
 
 
 def closes(course):
@@ -426,10 +432,11 @@ def test_leaning_push(kit):
 
 
 def test_silence_before_the_first_strike(kit):
-    subject, blow = bar_case(kit, begin_s=0.5)
+    subject, blow = bar_case(kit, begin_s=0.5, decay=0.01)
     course = follow(subject, [blow], end_s=1.0)
     track = kit.track(subject, course)
-    assert not np.any(track.modal(np.array([-1.0, 0.0, 0.49999])))
+    assert not np.any(track.modal(np.array([-1.0, -1e-3, 0.0, 0.49999])))
+    assert not np.any(track.linear(np.array([-1.0, 0.4])))
     assert np.any(track.modal(np.array([0.50001])))
 
 
