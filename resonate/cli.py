@@ -38,9 +38,10 @@ def main(arguments: list[str] | None = None) -> None:
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="backslashreplace")
     try:
-        commands([word for word in given if word != "--debug"], prog_name="resonate", standalone_mode=False)
+        with commands.make_context("resonate", [word for word in given if word != "--debug"]) as context:
+            commands.invoke(context)
         sys.stdout.flush()
-    except (KeyboardInterrupt, click.Abort):
+    except KeyboardInterrupt:
         click.echo("stopped", err=True)
         sys.exit(_INTERRUPTED)
     except click.exceptions.Exit as leaving:
@@ -55,8 +56,18 @@ def main(arguments: list[str] | None = None) -> None:
         sys.exit(_explain(error))
 
 
+def _stopped(error: BaseException | None) -> bool:
+    """Whether a person's Ctrl-C lies behind an error: compiled code turns it into another one."""
+    while error is not None and not isinstance(error, KeyboardInterrupt):
+        error = error.__cause__ or error.__context__
+    return error is not None
+
+
 def _explain(error: Exception) -> int:
     """Say on stderr what is wrong, where, and how to fix it; the exit code."""
+    if _stopped(error):
+        click.echo("stopped", err=True)
+        return _INTERRUPTED
     if isinstance(error, click.ClickException):
         error.show()
         return error.exit_code
