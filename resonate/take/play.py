@@ -67,7 +67,19 @@ def _device() -> ModuleType:
             "macOS: brew install portaudio), or open the WAV of a take in any player",
         ) from None
     module: ModuleType = sounddevice
+    try:
+        module.query_devices(kind="output")
+    except (module.PortAudioError, ValueError) as error:
+        raise _silent(error) from None
     return module
+
+
+def _silent(error: Exception) -> TakeError:
+    return TakeError(
+        what=f"no sound device takes the sound: {error}",
+        where="play",
+        fix="connect or choose an output device, or open the WAV of a take in any player",
+    )
 
 
 def _samples(path: Path, progress: Callable[[str], None]) -> tuple[Array, int]:
@@ -121,8 +133,4 @@ def play_path(path: Path, *, gain_db: float, progress: Callable[[str], None]) ->
     try:
         device.play(guarded(samples, rate_hz, gain_db=gain_db), rate_hz, blocking=True)
     except device.PortAudioError as error:
-        raise TakeError(
-            what=f"no sound device takes the sound: {error}",
-            where="play",
-            fix="connect or choose an output device, or open the WAV of a take in any player",
-        ) from None
+        raise _silent(error) from None
