@@ -212,8 +212,10 @@ class _Run:
         here = self._ended(stepper, stepper.done, stepper.q, stepper.v)
         if stepper.last:
             rest = self._ended(stepper, stepper.last, stepper.last_q, stepper.last_v)
+            # What stand-ins and contacts still hold then is lost: no force brings it back.
             standing = float(np.sum(stepper.moving.stands(stepper.last_q, stepper.last_v)))
-            self.rest = replace(rest, ledger=rest.ledger.plus(replace(Ledger.empty(), lost_truncation=standing)))
+            left = replace(Ledger.empty(), lost_truncation=standing, lost_contact=stepper.stored_j())
+            self.rest = replace(rest, ledger=rest.ledger.plus(left))
         held = stepper.moving.stands(stepper.q, stepper.v)
         for hit, left, energy in zip(hits, gone, held, strict=True):
             if left:

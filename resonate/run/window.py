@@ -23,6 +23,8 @@ if TYPE_CHECKING:
 # The base of every contact rate, Hz; steps are 1/(BASE 2^k), whatever the delivery rate.
 BASE_HZ = 48_000
 LEAST_POWER, MOST_POWER = 2, 9
+# Rate beyond which light modes alone do not push: there the ringing differs by less than -50 dB from its limit.
+_MODAL_POWER = 5
 # Steps over a Hertz contact when the rate is chosen, and the fewest that are accepted afterwards.
 WANTED, LEAST = 32, 28
 # Touches that carry less than this share of a blow's impulse need no resolution.
@@ -185,6 +187,10 @@ class Stepper:
             )
         return tuple(found)
 
+    def stored_j(self) -> float:
+        """Energy that the contacts hold now, J: where the force has ended early, not all has been given back."""
+        return float(np.sum(0.4 * self.contact[0] * np.maximum(self.delta, 0.0) ** 2.5))
+
     def quiet_s(self, number: int) -> float:
         """How long contact ``number`` has been without force, s; its earlier pieces count too."""
         parts = [*(piece.force_n for piece in self.hits[number].pieces), *(force[number] for force in self.forces)]
@@ -217,18 +223,26 @@ class Stepper:
         return nearest > reach and opening + pull * _SAFE_S >= 0.0
 
 
-def first_power(hit: Hit, omega: Array, row: Array, top_power: int = MOST_POWER) -> int:
+def first_power(hit: Hit, omega: Array, row: Array) -> int:
     """Rate (as a power of two over the base) that the Hertz time of a hit asks for.
 
-    ``row`` (b,) gains on the body's modes of ``omega`` (b,). Modes slower than the contact give way as mass does.
+    ``row`` (b,) gains on the body's modes of ``omega`` (b,). Motions as a whole make a striker's mass feel lighter; so
+    do modes slower than the contact, but what is as light as a string soon stops to matter: they only count so far.
     """
     speed = max(abs(hit.closing_m_s), 1e-3 * hit.blow.speed_m_s)
-    mass, time = hit.blow.mass_kg, 0.0
+    own = 1.0 / hit.blow.mass_kg
+    whole = _power(hit, own + float(np.sum(row[omega == 0.0] ** 2)), speed)
+    light = own
     for _ in range(6):
-        time = hertz.pulse(hit.blow.stiffness, mass, speed).duration_s
-        mass = 1.0 / (1.0 / hit.blow.mass_kg + float(np.sum(row**2 / (1.0 + (omega * time / np.pi) ** 2))))
+        time = hertz.pulse(hit.blow.stiffness, 1.0 / light, speed).duration_s
+        light = own + float(np.sum(row**2 / (1.0 + (omega * time / np.pi) ** 2)))
+    return max(whole, min(_power(hit, light, speed), _MODAL_POWER))
+
+
+def _power(hit: Hit, lightness_1_kg: float, speed_m_s: float) -> int:
+    time = hertz.pulse(hit.blow.stiffness, 1.0 / lightness_1_kg, speed_m_s).duration_s
     rate = max(4.0 * BASE_HZ, WANTED / time)
-    return int(np.clip(np.ceil(np.log2(rate / BASE_HZ) - 1e-9), LEAST_POWER, top_power))
+    return int(np.clip(np.ceil(np.log2(rate / BASE_HZ) - 1e-9), LEAST_POWER, MOST_POWER))
 
 
 def finer(hit: Hit) -> int:

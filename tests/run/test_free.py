@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -14,6 +16,8 @@ UP = np.array([0.0, 0.0, 0.0, 1.0])
 # Aluminium bar of 0.3 m, struck at 0.3 of its length.
 BAR = {"length_m": 0.3, "width_m": 0.03, "height_m": 0.008, "young_pa": 70e9, "density": 2700.0}
 SPOT = 0.3
+SIDE = np.array([0.1, 0.004, 0.0])
+DOWN = np.array([0.0, -1.0, 0.0])
 
 
 def closes(course):
@@ -103,6 +107,26 @@ def test_energy_of_a_spinning_falling_body(kit, spin):
         (a, b), (c, d) = track.pose(np.array([part.begin_s - 1e-9, part.begin_s + 1e-9]))
         np.testing.assert_allclose(a, b, atol=1e-7)
         np.testing.assert_allclose(c, d, atol=1e-5)
+
+
+@pytest.mark.parametrize("loss_s_m", [0.0, 0.6, 3.0])
+def test_energy_of_a_long_soft_touch(kit, loss_s_m):
+    # A fingertip's worth of contact: the body turns by a tenth of a radian meanwhile, in many frames, and with strong
+    # damping the force ends while the surfaces still overlap.
+    omega, shape, _ = kit.bar(**BAR, below_hz=20e3, at=SPOT)
+    subject = free_body(kit, kit.modes(omega, 3.0 + 1e-4 * omega), spin=(0.0, 2.0, 8.0), gravity=9.80665)
+    gains = DOWN[:, None] * shape
+    blow = kit.blow([], gains=gains, mass_kg=0.15, stiffness=3e5, loss_s_m=loss_s_m, speed_m_s=4.0, point_m=SIDE)
+    blow = replace(blow, give_m_n=1e-9 * np.eye(3))
+    course = follow(subject, [blow], end_s=0.3)
+    frames = sum(part.is_contact for part in course.segments)
+    event, ledger = course.events[0], course.ledger
+    print(
+        f"{frames} frames, {1e3 * (event.end_s - event.begin_s):.1f} ms, residual {ledger.residual / ledger.scale:.1e}"
+    )
+    assert frames > 20
+    closes(course)
+    assert (ledger.lost_contact > 0.01 * ledger.given) == (loss_s_m > 0.0)
 
 
 def test_spinning_body_converges_with_smaller_frames(kit, monkeypatch):
