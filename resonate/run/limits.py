@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 # Turning faster than this share of the first mode splits and shifts it.
 SPIN = 0.02
 _LOOKS = 256
-_POINTS = 400
+_POINTS = 150
 
 
 def _bent(track: BodyTrack, body: Body, strike: int) -> float:

@@ -214,8 +214,8 @@ class _Run:
             rest = self._ended(stepper, stepper.last, stepper.last_q, stepper.last_v)
             # What stand-ins and contacts still hold then is lost: no force brings it back.
             standing = float(np.sum(stepper.moving.stands(stepper.last_q, stepper.last_v)))
-            left = replace(Ledger.empty(), lost_truncation=standing, lost_contact=stepper.stored_j())
-            self.rest = replace(rest, ledger=rest.ledger.plus(left))
+            unreturned = replace(Ledger.empty(), lost_truncation=standing, lost_contact=stepper.stored_j())
+            self.rest = replace(rest, ledger=rest.ledger.plus(unreturned))
         held = stepper.moving.stands(stepper.q, stepper.v)
         for hit, left, energy in zip(hits, gone, held, strict=True):
             if left:
