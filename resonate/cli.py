@@ -7,6 +7,7 @@ import json
 import os
 import sys
 import traceback
+import warnings
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -14,7 +15,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from resonate import __version__
-from resonate.errors import ResonateError
+from resonate.errors import BodyError, Fault, ModesError, ResonateError, RunError
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable, Iterator
@@ -33,6 +34,9 @@ def main(arguments: list[str] | None = None) -> None:
     """Run a command and turn every outcome into an exit code: 0 fine, 1 fault, 2 bad input, 3 our defect."""
     given = sys.argv[1:] if arguments is None else list(arguments)
     debug = "--debug" in given
+    if not debug and not sys.warnoptions:
+        # What libraries warn of is for whoever mends this program, not for whoever uses it.
+        warnings.simplefilter("ignore")
     # A terminal that lacks a letter shows its code instead of stopping the command.
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):
@@ -104,7 +108,7 @@ def take(scene: Path, out: Path, *, replace: bool) -> None:
     from resonate.take.make import make_take
 
     wanted = read_scene(scene)
-    with _telling() as tell:
+    with _telling() as tell, _naming(scene):
         path = make_take(wanted, out=out, replace=replace, store=default_store(), progress=tell)
     click.echo(str(path))
     for line in _summary(path):
@@ -119,7 +123,8 @@ def _summary(path: Path) -> Iterable[str]:
     yield f"  events  {facts['events']}"
     sound = facts.get("sound")
     if sound:
-        yield f"  peak    {sound['levels']['peak_spl_db']:.1f} dB SPL, {sound['levels']['peak_dbfs']:.1f} dBFS"
+        spl, dbfs = sound["levels"]["peak_spl_db"], sound["levels"]["peak_dbfs"]
+        yield "  peak    none: it is silent" if spl is None else f"  peak    {spl:.1f} dB SPL, {dbfs:.1f} dBFS"
     yield f"  ledger  closes to {facts['ledger']['residual_share']:.1e} of the energy put in"
 
 
@@ -141,7 +146,7 @@ def modes(scene: Path, *, as_json: bool, most: int | None) -> None:
     wanted = read_scene(scene)
     store = default_store()
     found: list[tuple[float, ModeSet]] = []
-    with _telling() as tell:
+    with _telling() as tell, _naming(scene):
         for spec in wanted.bodies:
             tell(f"modes of {spec.name}")
             world = wanted.world
@@ -271,7 +276,7 @@ def play(what: Path, gain_db: float) -> None:
     """Audition WHAT, a take or a scene (which is run without writing). Starts quiet and limits peaks."""
     from resonate.take.play import play_path
 
-    with _telling() as tell:
+    with _telling() as tell, _naming(what):
         play_path(what, gain_db=gain_db, progress=tell)
 
 
@@ -285,6 +290,16 @@ def _telling() -> Iterator[Callable[[str], None]]:
 
     with Console(stderr=True).status("reading") as status:
         yield lambda words: _warn(words) if words.startswith(_WARNING) else status.update(words)
+
+
+@contextmanager
+def _naming(scene: Path) -> Iterator[None]:
+    """Add the scene's file to errors of its bodies and of its run, which do not know it."""
+    try:
+        yield
+    except (BodyError, ModesError, RunError) as error:
+        named = (Fault(what=fault.what, where=f"{scene}: {fault.where}", fix=fault.fix) for fault in error.faults)
+        raise type(error)(faults=tuple(named)) from error
 
 
 def _warn(words: str) -> None:

@@ -107,6 +107,12 @@ def _solve(body: Body) -> ModeSet:
             where=where,
             fix="the basis takes the freedoms that the supports leave to all of them",
         )
+    if not pencil.size:
+        raise ModesError(
+            what="its supports hold all of it, so that nothing is left to ring",
+            where=where,
+            fix="hold less of it",
+        )
     most, asked = body.bands.most, solved_hz(body)
     spare = SWINGS if forms.cords is not None else 0
     top = (2.0 * np.pi * asked) ** 2

@@ -190,10 +190,10 @@ class BodySpec(Part):
     support: tuple[HoldSpec, ...] = Field(default_factory=_default_support)
     place_m: Place = Field(validation_alias="place", default=(0.0, 0.0, 0.0))
     turn: Turn = (0.0, 0.0, 0.0, 1.0)
-    speed_m_s: Annotated[Triple, BeforeValidator(vector(number("speed")))] = Field(
+    speed_m_s: Annotated[Triple, BeforeValidator(vector(number("speed", least=-1e3, most=1e3)))] = Field(
         validation_alias="speed", default=(0.0, 0.0, 0.0)
     )
-    spin_rad_s: Annotated[Triple, BeforeValidator(vector(number("spin")))] = Field(
+    spin_rad_s: Annotated[Triple, BeforeValidator(vector(number("spin", least=-1e5, most=1e5)))] = Field(
         validation_alias="spin", default=(0.0, 0.0, 0.0)
     )
     modes: BandSpec = BandSpec()

@@ -55,7 +55,8 @@ def number(
         )
         if outside:
             allowed = _range(above=above, least=least, below=below, most=most)
-            raise RefusedError(f"{shown(value)} is out of range", f"give a {dimension} {allowed}")
+            article = "an" if dimension[0] in "aeiou" else "a"
+            raise RefusedError(f"{shown(value)} is out of range", f"give {article} {dimension} {allowed}")
         return result
 
     return read
@@ -163,6 +164,8 @@ Length = Annotated[float, BeforeValidator(number("length", above=0.0))]
 Modulus = Annotated[float, BeforeValidator(number("pressure", above=0.0))]
 Poisson = Annotated[float, BeforeValidator(number("number", above=-1.0, below=0.5))]
 Frequency = Annotated[float, BeforeValidator(number("frequency", above=0.0))]
-Place = Annotated[Triple, BeforeValidator(vector(number("length")))]
+# A double tells micrometres at this distance.
+_FARTHEST_M = 1e5
+Place = Annotated[Triple, BeforeValidator(vector(number("length", least=-_FARTHEST_M, most=_FARTHEST_M)))]
 Direction = Annotated[Triple, BeforeValidator(_direction)]
 Turn = Annotated[Quaternion, BeforeValidator(_turn)]
