@@ -155,7 +155,8 @@ def _write_files(
     if "events" in path:
         write_events(path["events"], record, scene)
     warnings = list(dict.fromkeys(warnings))
-    for note in warnings:
+    # Told, but not written: trouble with the store.
+    for note in dict.fromkeys([*(note for found in ran.modes for note in found.warnings), *warnings]):
         progress(f"warning: {note}")
     if "manifest" in path:
         write_manifest(

@@ -115,3 +115,19 @@ def small(tmp_path):
 @pytest.fixture(scope="session")
 def root():
     return ROOT
+
+
+# Faults that were refused: (fault, where, what, fix), for the table at the end.
+FAULTY = pytest.StashKey[list]()
+
+
+def pytest_configure(config):
+    config.faulty = FAULTY
+
+
+def pytest_terminal_summary(terminalreporter, config):
+    rows = config.stash.get(FAULTY, [])
+    if rows:
+        terminalreporter.section(f"{len(rows)} kinds of bad input, each refused with exit code 2")
+    for number, (fault, where, what, fix) in enumerate(rows, 1):
+        terminalreporter.write_line(f"{number:2}  {fault:30}  {where}: {what}  ->  {fix}"[:230])
