@@ -261,7 +261,7 @@ def test_two_runs_of_one_take_and_a_killed_run(shell, refused):
 
 
 def test_every_fault_of_a_file_is_told_at_once(shell):
-    faulty = [row for row in WRITTEN if re.match(r":\d+: ", row[3]) and row[0] not in ("a table of a later version",)]
+    faulty = [row for row in WRITTEN if re.match(r":\d+: ", row[3]) and row[0] != "a table of a later version"]
     text, lines = SCENE, set()
     for _, old, new, where, _ in faulty:
         line = int(where[1:].partition(":")[0])
