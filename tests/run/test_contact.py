@@ -7,8 +7,7 @@ import pytest
 from scipy.optimize import root
 
 from resonate.run import hertz
-from resonate.run.kernels.force import bracketed, gradient, pressed, settle, solve
-from resonate.run.kernels.march import fold, march
+from resonate.run.kernels.march import bracketed, fold, gradient, march, pressed, settle, solve
 from resonate.run.propagator import coefficients
 from resonate.run.track import crest
 
@@ -246,6 +245,29 @@ def test_many_contacts_against_an_independent_solver(count):
         other = np.linalg.solve(give, y_free - found.x)
         np.testing.assert_allclose(force, other, rtol=0.0, atol=1e-10 * force.max() + 1e-16 / np.diag(give).min())
     assert solved >= 20
+
+
+@pytest.mark.parametrize("count", [2, 7, 24])
+def test_many_stiff_contacts_on_something_light(count):
+    """Strikers all along a string: the contacts are far stiffer than what a step lets the string give."""
+    rng = np.random.default_rng(100 + count)
+    for _ in range(60):
+        shapes = rng.normal(size=(count, 12))
+        give = shapes @ shapes.T * 10.0 ** rng.uniform(-9, -7) + np.eye(count) * 1e-10
+        stiffness, loss = 10.0 ** rng.uniform(4, 10, count), 10.0 ** rng.uniform(3, 6, count)
+        delta, y_free = rng.uniform(-1, 1, count) * 1e-3, rng.uniform(-1, 1, count) * 3e-6
+        force = np.abs(rng.normal(size=count)) * rng.integers(0, 2)
+        assert settle(delta, y_free, give, stiffness, loss, force)
+        for j in range(count):
+            # Every contact solves its own equation among the others, within a hair of where it goes.
+            reach = float(y_free[j] - give[j] @ force + give[j, j] * force[j])
+            y = reach - give[j, j] * force[j]
+            hair = 1e-12 * (abs(reach) + give[j, j] * force[j])
+            hair += 1e-14 * (abs(delta[j]) + give[j, j] * gradient(delta[j], y, stiffness[j]))
+            low, high = (
+                y + side + give[j, j] * pressed(delta[j], y + side, stiffness[j], loss[j]) for side in (-hair, hair)
+            )
+            assert low <= reach <= high
 
 
 def test_lossless_rattle_keeps_its_energy():
