@@ -265,7 +265,7 @@ def check(take: Path, *, as_json: bool, again: bool) -> None:
 
 
 @commands.command()
-@click.argument("what", type=click.Path(path_type=Path))
+@click.argument("what", metavar="TAKE|SCENE", type=click.Path(path_type=Path))
 @click.option(
     "--gain-db",
     type=click.FloatRange(-60.0, 20.0),
@@ -273,7 +273,7 @@ def check(take: Path, *, as_json: bool, again: bool) -> None:
     help="Louder or quieter than the safe start; peaks stay limited.",
 )
 def play(what: Path, gain_db: float) -> None:
-    """Audition WHAT, a take or a scene (which is run without writing). Starts quiet and limits peaks."""
+    """Audition a take, or a scene, which is run without writing. Starts quiet and limits peaks."""
     from resonate.take.play import play_path
 
     with _telling() as tell, _naming(what):
