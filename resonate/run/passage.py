@@ -190,7 +190,7 @@ class _Run:
                 raise RunError(
                     what=f"the striker never touches: the surface moves away from its {hit.blow.speed_m_s:g} m/s",
                     where=self._where(hit.blow),
-                    fix="strike faster, at another time or from the other side, or keep the body in place (held = true)",
+                    fix="strike faster, at another time or from the other side, or keep the body in place: held = true",
                 )
             if not left:
                 raise RunError(
