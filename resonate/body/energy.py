@@ -26,6 +26,8 @@ if TYPE_CHECKING:
 
 # Couplings below this are round-off.
 _ROUNDING = 1e-14
+# A constraint whose own part is less than this share of the others' says nothing new.
+_INDEPENDENT = 1e-10
 
 
 @dataclass(frozen=True, slots=True)
@@ -146,31 +148,27 @@ def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
     Constraints that share no freedom are treated apart, so that the basis stays sparse. In each group as many
     freedoms as there are independent constraints are expressed by the others.
     """
-    from scipy.linalg import qr, solve_triangular
-
-    if rows.shape[0] == 0:
-        return csr_matrix((np.ones(size), (np.arange(size), np.arange(size))), shape=(size, size))
-    rows = rows.tocsr()
+    rows = csr_matrix(rows, copy=True)
+    rows.sum_duplicates()
+    rows.eliminate_zeros()
+    rows = rows[np.diff(rows.indptr) > 0]
     touched = np.unique(rows.indices)
     small = rows[:, touched]
     graph = (abs(small).T @ abs(small)).tocsr()
     _, group = connected_components(graph, directed=False)
+    members = np.bincount(group)
     group_of_row = group[small.indices[small.indptr[:-1]]]
-    dependent: list[int] = []
+    # A freedom that only constraints of its own touch is zero.
+    dependent = [touched[members[group] == 1]]
     entries: list[tuple[NDArray[np.int64], NDArray[np.int64], Array]] = []
-    for number in np.unique(group):
+    for number in np.flatnonzero(members > 1):
         columns = np.flatnonzero(group == number)
-        dense = small[group_of_row == number][:, columns].toarray()
-        _, upper, pivot = qr(dense, mode="economic", pivoting=True)
-        diagonal = np.abs(np.diag(upper))
-        rank = int(np.sum(diagonal > 1e-10 * diagonal[0]))
+        dense = small[np.flatnonzero(group_of_row == number)][:, columns].toarray()
+        rank, pivot, link = _dependence(dense)
         chosen, rest = touched[columns[pivot[:rank]]], touched[columns[pivot[rank:]]]
-        dependent.extend(chosen.tolist())
-        if len(rest):
-            link = -solve_triangular(upper[:rank, :rank], upper[:rank, rank:])
-            link[np.abs(link) < _ROUNDING] = 0.0
-            entries.append((np.repeat(chosen, len(rest)), np.tile(rest, rank), link.ravel()))
-    free = np.setdiff1d(np.arange(size), np.array(dependent, dtype=np.int64))
+        dependent.append(chosen)
+        entries.append((np.repeat(chosen, len(rest)), np.tile(rest, rank), link.ravel()))
+    free = np.setdiff1d(np.arange(size), np.concatenate(dependent))
     place = np.full(size, -1, dtype=np.int64)
     place[free] = np.arange(len(free))
     row = np.concatenate([free, *(entry[0] for entry in entries)])
@@ -178,3 +176,15 @@ def eliminate(rows: csr_matrix, size: int) -> csr_matrix:
     value = np.concatenate([np.ones(len(free)), *(entry[2] for entry in entries)])
     keep = value != 0.0
     return csr_matrix((value[keep], (row[keep], column[keep])), shape=(size, len(free)))
+
+
+def _dependence(dense: Array) -> tuple[int, NDArray[np.int64], Array]:
+    """Rank r, an order of the columns, and (r, rest): the first r columns' unknowns from the others'."""
+    from scipy.linalg import qr, solve_triangular
+
+    _, upper, pivot = qr(dense, mode="economic", pivoting=True)
+    diagonal = np.abs(np.diag(upper))
+    rank = int(np.sum(diagonal > _INDEPENDENT * diagonal[0]))
+    link = -solve_triangular(upper[:rank, :rank], upper[:rank, rank:])
+    link[np.abs(link) < _ROUNDING] = 0.0
+    return rank, pivot, link

@@ -21,7 +21,7 @@ from resonate.body.flat_layout import SHEAR, FlatLayout
 from resonate.body.flat_spot import flat_spot
 from resonate.body.heat import Heat
 from resonate.body.reduce import bending_reach_m, reduced, tension_reach_m
-from resonate.body.spectral import ROUNDING, Grid, basis
+from resonate.body.spectral import ROUNDING, Grid, basis, weld
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
 from resonate.scene.model import BoxPlace, MembraneShape, NamedPlace
@@ -165,9 +165,8 @@ class FlatBody:
         line = np.linspace(-1.0, 1.0, per_side + 1)
         local = np.stack(np.meshgrid(line, line, indexing="ij"), axis=2).reshape(-1, 2)
         value, _ = basis(self.grid.order, local)
-        places = np.einsum("qk,ekd->eqd", value, self.grid.nodes_m[self.grid.elements])
-        flat, numbers = _merged(places.reshape(-1, 2))
-        number = numbers.reshape(len(places), per_side + 1, per_side + 1)
+        mesh = weld(np.einsum("qk,ekd->eqd", value, self.grid.nodes_m[self.grid.elements]), per_side)
+        flat, number = mesh.nodes_m, mesh.elements.reshape(-1, per_side + 1, per_side + 1)
         quads = np.stack(
             (number[:, :-1, :-1], number[:, :-1, 1:], number[:, 1:, 1:], number[:, 1:, :-1]), axis=3
         ).reshape(-1, 4)
@@ -234,23 +233,25 @@ class FlatBody:
                 chosen.extend(self.layout.edges.values() if name == "edge" else [self.layout.edges[name]])
             at = np.concatenate([edge.nodes for edge in chosen])
             outward = np.concatenate([edge.outward for edge in chosen])
-            share = np.concatenate([edge.share for edge in chosen]) / len(chosen)
-            return Held(_lift(nodes[at]), share, _lift(outward))
+            length = np.concatenate([edge.length_m for edge in chosen])
+            return Held.of(_lift(nodes[at]), length, outward=_lift(outward), places=len(where.names))
         if isinstance(where, BoxPlace):
             low, high = np.array(where.low_m), np.array(where.high_m)
             slack = 1e-9 * float(np.ptp(nodes, axis=0).max())
             inside = np.all((nodes >= low[[0, 2]] - slack) & (nodes <= high[[0, 2]] + slack), axis=1)
             half = 0.5 * self.thickness_m
-            points = _lift(nodes[inside & (low[1] <= half) & (high[1] >= -half)])
+            inside &= (low[1] <= half) & (high[1] >= -half)
+            points = _lift(nodes[inside])
+            size = self.grid.measure()[inside]
         else:
-            points = self._nearest(np.array(where.point_m))
+            points, size = self._nearest(np.array(where.point_m)), np.ones(1)
         if len(points) == 0:
             raise BodyError(
                 what="the box of a support holds no point of the mesh",
                 where=f"body {self.name!r}",
                 fix="make the box larger, or support a point",
             )
-        return Held(points, np.full(len(points), 1.0 / len(points)))
+        return Held.of(points, size)
 
     def _nearest(self, point: Array) -> Array:
         _, _, miss = self.grid.locate(point[None, [0, 2]])
@@ -310,14 +311,6 @@ class FlatBody:
 
 def _lift(flat: Array) -> Array:
     return np.stack((flat[:, 0], np.zeros(len(flat)), flat[:, 1]), axis=1)
-
-
-def _merged(places: Array) -> tuple[Array, NDArray[np.int64]]:
-    size = float(np.ptp(places, axis=0).max())
-    _, first, number = np.unique(
-        np.round(places / (1e-6 * size)).astype(np.int64), axis=0, return_index=True, return_inverse=True
-    )
-    return places[first], number.ravel().astype(np.int64)
 
 
 def _facing(flat: Array, quads: NDArray[np.int64]) -> NDArray[np.int64]:

@@ -234,20 +234,24 @@ class LineBody:
         length = self.layout.length_m
         if isinstance(where, NamedPlace):
             points = np.array([[0.0 if name == "left" else length, 0.0, 0.0] for name in where.names])
-        elif isinstance(where, BoxPlace):
+            return Held.of(points, np.ones(len(points)), places=len(points))
+        if isinstance(where, BoxPlace):
             x = self.grid.nodes_m[:, 0]
             inside = (x >= where.low_m[0] - 1e-9 * length) & (x <= where.high_m[0] + 1e-9 * length)
-            reach = all(low <= 0.5 * size and high >= -0.5 * size for low, high, size in self._extent(where))
-            points = np.stack((x, 0.0 * x, 0.0 * x), axis=1)[inside & reach]
+            if not all(low <= 0.5 * size and high >= -0.5 * size for low, high, size in self._extent(where)):
+                inside = np.zeros_like(inside)
+            points = np.stack((x, 0.0 * x, 0.0 * x), axis=1)[inside]
+            whole = np.asarray(inside[self.grid.elements].all(axis=1), dtype=np.bool_)
+            size = self.grid.measure(whole)[inside]
         else:
-            points = self._nearest(np.array(where.point_m))
+            points, size = self._nearest(np.array(where.point_m)), np.ones(1)
         if len(points) == 0:
             raise BodyError(
                 what="the box of a support holds no part of the body",
                 where=f"body {self.name!r}",
                 fix=f"the body runs from x = 0 to {length:g} m, round y = z = 0",
             )
-        return Held(points, np.full(len(points), 1.0 / len(points)))
+        return Held.of(points, size)
 
     def _extent(self, where: BoxPlace) -> list[tuple[float, float, float]]:
         middle = self.layout.section_at(np.linspace(0.0, self.layout.length_m, _STATIONS))

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from resonate.body.polygon import quadrilaterals
-from resonate.body.spectral import Grid, lobatto, weld
+from resonate.body.spectral import Grid, lagrange, lobatto, lobatto_weights, weld
 from resonate.errors import BodyError
 from resonate.scene.model import CircleOutline, PolygonOutline, RectangleOutline, RingOutline
 
@@ -38,11 +38,11 @@ _SLACK = 0.25
 
 @dataclass(frozen=True, slots=True)
 class Edge:
-    """One named edge: nodes (k,) of the grid, their outward normals (k, 2) and share of the length (k,)."""
+    """One named edge: nodes (k,) of the grid, their outward normals (k, 2) and length (k,) that each stands for, m."""
 
     nodes: NDArray[np.int64]
     outward: Array
-    share: Array
+    length_m: Array
 
 
 def area(outline: Outline) -> float:
@@ -217,7 +217,7 @@ def edges(outline: Outline, grid: Grid) -> dict[str, Edge]:
                 at = np.flatnonzero(np.abs(nodes[:, axis] - end[axis]) < 1e-7 * size)
                 outward = np.zeros((len(at), 2))
                 outward[:, axis] = sign
-                found[letter + name] = Edge(at, outward, _share(nodes[at, 1 - axis], closed=False))
+                found[letter + name] = Edge(at, outward, _lengths(grid, at))
     elif isinstance(outline, PolygonOutline):
         corners = np.array(outline.corners_m)
         swept = corners[:, 0] * np.roll(corners[:, 1], -1) - corners[:, 1] * np.roll(corners[:, 0], -1)
@@ -230,7 +230,7 @@ def edges(outline: Outline, grid: Grid) -> dict[str, Edge]:
             run = offset @ along
             at = np.flatnonzero((far < 1e-7 * size) & (run > -1e-7 * size) & (run < length + 1e-7 * size))
             outward = np.tile(hand * np.array([along[1], -along[0]]), (len(at), 1))
-            found[f"edge{number}"] = Edge(at, outward, _share(run[at], closed=False))
+            found[f"edge{number}"] = Edge(at, outward, _lengths(grid, at))
     else:
         rims = {"outer": high[0]}
         if isinstance(outline, RingOutline):
@@ -239,20 +239,21 @@ def edges(outline: Outline, grid: Grid) -> dict[str, Edge]:
         for name, rim in rims.items():
             at = np.flatnonzero(np.abs(radius - rim) < 1e-7 * size)
             sign = -1.0 if name == "inner" else 1.0
-            angle = np.arctan2(nodes[at, 1], nodes[at, 0])
-            found[name] = Edge(at, sign * nodes[at] / rim, _share(angle, closed=True))
+            found[name] = Edge(at, sign * nodes[at] / rim, _lengths(grid, at))
     return found
 
 
-def _share(run: Array, *, closed: bool) -> Array:
-    # Trapezoid shares of an edge, sum 1, so that a spread spring does not depend on where nodes crowd.
-    order = np.argsort(run)
-    gaps = np.diff(run[order])
-    weight = np.zeros(len(run))
-    weight[order[:-1]] += 0.5 * gaps
-    weight[order[1:]] += 0.5 * gaps
-    if closed:
-        last = 2.0 * np.pi - (run[order[-1]] - run[order[0]])
-        weight[order[0]] += 0.5 * last
-        weight[order[-1]] += 0.5 * last
-    return np.asarray(weight / weight.sum())
+def _lengths(grid: Grid, at: NDArray[np.int64]) -> Array:
+    # Gauss-Lobatto weights of the elements' sides along an edge: a spread spring is then the same on every mesh.
+    on_edge = np.zeros(len(grid.nodes_m), dtype=bool)
+    on_edge[at] = True
+    n = grid.order + 1
+    number = np.arange(n * n).reshape(n, n)
+    weight, length = lobatto_weights(grid.order), np.zeros(len(grid.nodes_m))
+    _, slope = lagrange(grid.order, lobatto(grid.order))
+    for side in (number[0], number[-1], number[:, 0], number[:, -1]):
+        sides = grid.elements[:, side]
+        sides = sides[on_edge[sides].all(axis=1)]
+        speed = np.linalg.norm(np.einsum("qk,ekd->eqd", slope, grid.nodes_m[sides]), axis=2)
+        np.add.at(length, sides, weight * speed)
+    return np.asarray(length[at])

@@ -26,6 +26,8 @@ if TYPE_CHECKING:
 
 # Two nodes closer than this fraction of the body's size are one node.
 _WELD = 1e-9
+# How far a curved side may reach beyond its nodes, as a share of its element.
+_BULGE = 0.02
 # Values of nodal functions below this are round-off.
 ROUNDING = 1e-13
 
@@ -37,6 +39,18 @@ def lobatto(order: int) -> Array:
     inner = np.sort(legendre.roots().real)
     nodes = np.concatenate(([-1.0], inner, [1.0]))
     return np.asarray(0.5 * (nodes - nodes[::-1]), dtype=np.float64)
+
+
+@cache
+def lobatto_weights(order: int) -> Array:
+    """Weights (order + 1,) of the nodes of ``lobatto``; exact up to degree 2 order - 1.
+
+    References
+    ----------
+    Abramowitz & Stegun, Handbook of Mathematical Functions, 25.4.32.
+    """
+    legendre = np.polynomial.legendre.Legendre.basis(order)
+    return np.asarray(2.0 / (order * (order + 1) * legendre(lobatto(order)) ** 2), dtype=np.float64)
 
 
 @cache
@@ -136,25 +150,51 @@ class Grid:
         slope = np.einsum("qks,eqsd->eqkd", local, np.linalg.inv(jacobian))
         return Quadrature(value=value, slope=slope, weight=weight * np.abs(scale), place_m=place)
 
+    def measure(self, chosen: NDArray[np.bool_] | None = None) -> Array:
+        """Length or area (n,) that stands for each node, m or m^2, in all elements or the ``chosen`` (e,) ones."""
+        nodes, weights = lobatto(self.order), lobatto_weights(self.order)
+        if self.dimension == 1:
+            points, weight = nodes[:, None], weights
+        else:
+            points = np.stack(np.meshgrid(nodes, nodes, indexing="ij"), axis=2).reshape(-1, 2)
+            weight = np.outer(weights, weights).ravel()
+        elements = self.elements if chosen is None else self.elements[chosen]
+        _, slope = basis(self.order, points)
+        jacobian = np.einsum("qks,ekd->eqds", slope, self.nodes_m[elements])
+        total = np.zeros(len(self.nodes_m))
+        np.add.at(total, elements, weight * np.abs(np.linalg.det(jacobian)))
+        return total
+
     def locate(self, points_m: Array) -> tuple[IntArray, Array, Array]:
         """Find the element and local coordinates nearest to each point.
 
         Returns element (k,), local coordinates (k, dim) clipped to the element, and the distance (k,) left.
         """
-        centre = self.nodes_m[self.elements].mean(axis=1)
-        near = np.linalg.norm(points_m[:, None, :] - centre[None], axis=2)
-        reach = min(len(self.elements), 3 if self.dimension == 1 else 9)
-        order = np.argsort(near, axis=1, kind="stable")[:, :reach]
+        corners = self.nodes_m[self.elements]
+        low, high = corners.min(axis=1), corners.max(axis=1)
+        # A curved side may bulge a little beyond its nodes.
+        slack = _BULGE * (high - low).max(axis=1, keepdims=True)
+        outside = np.maximum(np.maximum(low - slack - points_m[:, None], points_m[:, None] - high - slack), 0.0)
+        # No point of an element is nearer than its box, so that nothing further can be better.
+        least = np.linalg.norm(outside, axis=2)
+        near = np.linalg.norm(points_m[:, None] - corners.mean(axis=1), axis=2)
+        order = np.lexsort((near, least), axis=1)
         best = np.zeros(len(points_m), dtype=np.int64)
         local = np.zeros_like(points_m)
         left = np.full(len(points_m), np.inf)
+        enough = _WELD * float(np.ptp(self.nodes_m, axis=0).max())
+        every = np.arange(len(points_m))
         for column in order.T:
-            guess = self._invert(column, points_m)
+            rows = np.flatnonzero((left > enough) & (least[every, column] < left))
+            if len(rows) == 0:
+                break
+            element = column[rows]
+            guess = self._invert(element, points_m[rows])
             value, _ = basis(self.order, guess)
-            there = np.einsum("pk,pkd->pd", value, self.nodes_m[self.elements[column]])
-            miss = np.linalg.norm(there - points_m, axis=1)
-            better = miss < left - _WELD * (1.0 + np.where(np.isfinite(left), left, 0.0))
-            best[better], local[better], left[better] = column[better], guess[better], miss[better]
+            miss = np.linalg.norm(np.einsum("pk,pkd->pd", value, corners[element]) - points_m[rows], axis=1)
+            better = miss < left[rows]
+            kept = rows[better]
+            best[kept], local[kept], left[kept] = element[better], guess[better], miss[better]
         return best, local, left
 
     def _invert(self, element: IntArray, points_m: Array) -> Array:

@@ -30,12 +30,21 @@ class Held:
     """Where one support acts.
 
     ``points_m`` (k, 3) material points; ``share`` (k,) how much of a spring each takes (sum 1);
-    ``outward`` (k, 3) normals of the edge in its plane, or None off the edges.
+    ``outward`` (k, 3) normals of the edge in its plane, or None off the edges; ``places``: how many ends, edges,
+    points or boxes they belong to, each with a cord of its own.
     """
 
     points_m: Array
     share: Array
     outward: Array | None = None
+    places: int = 1
+
+    @classmethod
+    def of(cls, points_m: Array, size: Array, *, outward: Array | None = None, places: int = 1) -> Held:
+        """Share by the length or area (k,) that each point stands for; evenly where that is nothing."""
+        total = float(size.sum())
+        share = size / total if total > 0.0 else np.full(len(size), 1.0 / len(size))
+        return cls(points_m, share, outward, places)
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,13 +99,25 @@ def _fixed_rows(kind: NamedHold | FixHold, held: Held, motion: csr_matrix, *, li
     return rows
 
 
-def _gather(rows: list[csr_matrix], width: int) -> csr_matrix:
+def _tidy(rows: list[csr_matrix], width: int) -> csr_matrix:
     if not rows:
         return csr_matrix((0, width))
     stack = vstack(rows).tocsr()
     stack.data[np.abs(stack.data) < _ROUNDING] = 0.0
     stack.eliminate_zeros()
+    return stack
+
+
+def _gather(rows: list[csr_matrix], width: int) -> csr_matrix:
+    stack = _tidy(rows, width)
     return stack[np.diff(stack.indptr) > 0]
+
+
+def _moving(rows: list[csr_matrix], damping: list[Array], width: int) -> tuple[csr_matrix, Array]:
+    # A skin has no motion along its own plane, so that some rows of a dashpot are empty.
+    stack = _tidy(rows, width)
+    moves = np.diff(stack.indptr) > 0
+    return stack[moves], np.concatenate([*damping, np.zeros(0)])[moves]
 
 
 def supports(
@@ -120,7 +141,7 @@ def supports(
     fixed = [csr_matrix((np.ones(len(unused)), (np.arange(len(unused)), unused)), shape=(len(unused), size))]
     springs, cords, dampers, damping = [], [], [], []
     places = [(hold, body.select(hold)) for hold in holds]
-    hung = sum(len(held.points_m) for hold, held in places if isinstance(hold.hold, CordHold))
+    hung = sum(held.places for hold, held in places if isinstance(hold.hold, CordHold))
     for hold, held in places:
         motion = body.motion(held.points_m)
         count = len(held.points_m)
@@ -141,12 +162,12 @@ def supports(
             for point in range(count):
                 rows = motion[moves[point]]
                 local = sway * np.eye(3) + (stretch - sway) * np.outer(up, up)
-                cords.append(rows.T @ csr_matrix(local) @ rows)
-    damper_rows = _gather(dampers, size) if dampers else csr_matrix((0, size))
+                cords.append(held.places * held.share[point] * (rows.T @ csr_matrix(local) @ rows))
+    damper_rows, damper_ns_m = _moving(dampers, damping, size)
     return Supports(
         basis=eliminate(_gather(fixed, size), size),
         springs=sum(springs[1:], springs[0]).tocsr() if springs else None,
         cords=sum(cords[1:], cords[0]).tocsr() if cords else None,
         damper_rows=damper_rows,
-        damper_ns_m=np.concatenate(damping)[: damper_rows.shape[0]] if damping else np.zeros(0),
+        damper_ns_m=damper_ns_m,
     )
