@@ -36,30 +36,28 @@ class Ritz:
 
 @dataclass(frozen=True, slots=True)
 class _Block:
-    # W = vector @ factor, vector M-orthonormal; `spread` is small where W was nearly dependent.
+    # W = vector @ factor, vector M-orthonormal; heavy = M vector; `spread` is small where W was nearly dependent.
     vector: Array
+    heavy: Array
     factor: Array
     spread: float
 
 
-def _triangle(block: Array, mass: csr_matrix) -> _Block:
+def _triangle(block: Array, heavy: Array) -> _Block:
     """One Cholesky QR pass in the M inner product, by eigenvectors where Cholesky breaks down."""
-    gram = block.T @ (mass @ block)
+    gram = block.T @ heavy
     size = np.sqrt(np.maximum(np.diag(gram), np.finfo(float).tiny))
     scaled = gram / size[:, None] / size[None, :]
     try:
         upper = scipy.linalg.cholesky(scaled)
-        vector = scipy.linalg.solve_triangular(upper, (block / size).T, trans="T", lower=False).T
-        spread = float(np.min(np.diag(upper)))
-        return _Block(vector=vector, factor=upper * size, spread=spread)
+        back = scipy.linalg.solve_triangular(upper, np.eye(len(size))) / size[:, None]
+        factor, spread = upper * size, float(np.min(np.diag(upper)))
     except scipy.linalg.LinAlgError:
         value, turn = scipy.linalg.eigh(scaled)
         root = np.sqrt(np.maximum(value, np.finfo(float).eps))
-        return _Block(
-            vector=(block / size) @ (turn / root),
-            factor=root[:, None] * turn.T * size,
-            spread=float(root[0] / root[-1]),
-        )
+        back = turn / root / size[:, None]
+        factor, spread = root[:, None] * turn.T * size, float(root[0] / root[-1])
+    return _Block(vector=block @ back, heavy=heavy @ back, factor=factor, spread=spread)
 
 
 def orthonormal(block: Array, mass: csr_matrix, against: Array | None = None) -> _Block:
@@ -77,18 +75,22 @@ def orthonormal(block: Array, mass: csr_matrix, against: Array | None = None) ->
     Returns
     -------
     _Block
-        ``vector`` (n, b) and ``factor`` (b, b) with ``projected block = vector @ factor``.
+        ``vector`` (n, b) and ``factor`` (b, b) with ``projected block = vector @ factor``, and ``heavy``, M times
+        ``vector``.
     """
     total = np.eye(block.shape[1])
-    spread = 0.0
+    spread, heavy = 0.0, mass @ block
     for _ in range(5):
-        if spread < PARALLEL and against is not None and against.shape[1]:
-            block = block - against @ (against.T @ (mass @ block))
-        step = _triangle(block, mass)
-        block, total, spread = step.vector, step.factor @ total, step.spread
+        if spread < PARALLEL:
+            if against is not None and against.shape[1]:
+                block = block - against @ (against.T @ heavy)
+            # Rounding has grown in what the last pass divided by little.
+            heavy = mass @ block
+        step = _triangle(block, heavy)
+        block, heavy, total, spread = step.vector, step.heavy, step.factor @ total, step.spread
         if spread > 1.0 - 1e-6:
             break
-    return _Block(vector=block, factor=total, spread=spread)
+    return _Block(vector=block, heavy=heavy, factor=total, spread=spread)
 
 
 @dataclass(frozen=True, slots=True)
@@ -135,17 +137,16 @@ class _Basis:
         self.projected[before, here] = coupling.T
         self.count = need
 
-    def step(self, solve: Callable[[Array], Array], width: int, coupling: Array) -> _Block:
+    def step(self, solve: Callable[[Array], Array], last: _Block, coupling: Array) -> _Block:
         """Apply the operator to the last block; enter its coefficients; return what is left of it."""
-        last = slice(self.count - width, self.count)
-        block = self.vectors[:, last]
-        image = solve(self.mass @ block)
+        at = slice(self.count - last.vector.shape[1], self.count)
+        image = solve(last.heavy)
         # First the three-term recurrence, which takes the bulk off, then everything once.
-        before = slice(last.start - coupling.shape[1], last.start)
+        before = slice(at.start - coupling.shape[1], at.start)
         image = image - self.vectors[:, before] @ coupling.T
-        inner = block.T @ (self.mass @ image)
-        image = image - block @ inner
-        at = slice(last.start - self.skip, last.stop - self.skip)
+        inner = last.heavy.T @ image
+        image = image - last.vector @ inner
+        at = slice(at.start - self.skip, at.stop - self.skip)
         self.projected[at, at] = 0.5 * (inner + inner.T)
         return orthonormal(image, self.mass, self.vectors[:, : self.count])
 
@@ -200,13 +201,13 @@ def lanczos(
     """
     size = len(start)
     basis = _Basis(deflated, mass)
-    first = orthonormal(start, mass, deflated)
+    block = orthonormal(start, mass, deflated)
     width = start.shape[1]
     coupling = np.empty((width, 0))
-    basis.append(first.vector, coupling)
+    basis.append(block.vector, coupling)
     look, last = min(max(4 * width, int(1.5 * min(need, 64))), size - basis.skip), _Check()
     while True:
-        left = basis.step(solve, width, coupling)
+        left = basis.step(solve, block, coupling)
         held = basis.count - basis.skip
         room = size - basis.count
         if held >= look or room < width:
@@ -227,5 +228,5 @@ def lanczos(
                 )
             look = last.next_size(held, found, goal=goal, width=width)
             last = _Check(held=held, found=found)
-        coupling = left.factor
-        basis.append(left.vector, coupling)
+        block, coupling = left, left.factor
+        basis.append(block.vector, coupling)
