@@ -24,7 +24,7 @@ ORDER = 6
 # Reissner, J. Appl. Mech. 12 (1945) 69: the parabolic shear of a plate.
 SHEAR = 5.0 / 6.0
 # Nodes for each wavelength of the highest wanted mode.
-_NODES_PER_WAVE = 4.6
+_NODES_PER_WAVE = 4.2
 # Largest number of nodes.
 _BUDGET = 6000
 _MARGIN = 1.1

@@ -50,6 +50,8 @@ _STRAINS = Strain.of(
 )
 _BENDS = Strain.of(FIELDS, 1, {(5, 0): 1.0}, {(4, 0): 1.0})
 _STATIONS = 65
+# Below this radius of gyration, as a share of the length, shear and rotary inertia act as if it were larger.
+_THIN = 5e-5
 _ROUND_STEPS = 16
 
 
@@ -289,10 +291,11 @@ class LineBody:
         material, tension = self.spec.material, self.layout.tension_n
         density, young = material.density_kg_m3, material.young_pa[0]
         pull = np.full_like(section.area, tension)
+        up, across = (self._stout(second, section.area) for second in (section.up, section.across))
         stiff = _diagonal(
             young * section.area,
-            section.shear_up * material.shear_pa[1] * section.area,
-            section.shear_across * material.shear_pa[0] * section.area,
+            section.shear_up * material.shear_pa[1] * section.area / up,
+            section.shear_across * material.shear_pa[0] * section.area / across,
             section.torsion,
             young * section.across,
             young * section.up,
@@ -302,12 +305,17 @@ class LineBody:
         heavy = _diagonal(
             *(3 * (density * section.area,)),
             density * (section.up + section.across),
-            density * section.across,
-            density * section.up,
+            density * section.across * across,
+            density * section.up * up,
         )
         stiffness = assemble(self.grid, at, _STRAINS, stiff)
         mass = assemble(self.grid, at, _MOVE, heavy)
         return reduced(stiffness, mass, self.supports, self._heat(section))
+
+    def _stout(self, second: Array, area: Array) -> Array:
+        """How much to soften shear and raise rotary inertia, so that rounding leaves the first modes of a wire."""
+        least = area * (_THIN * self.layout.length_m) ** 2
+        return np.asarray(np.maximum(1.0, least / np.maximum(second, 1e-9 * least)))
 
     def _heat(self, section: Section) -> tuple[HeatForm, ...]:
         heat = Heat.of(self.spec.material, self.temperature_k)

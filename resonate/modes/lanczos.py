@@ -81,10 +81,11 @@ def orthonormal(block: Array, mass: csr_matrix, against: Array | None = None) ->
     total = np.eye(block.shape[1])
     spread, heavy = 0.0, mass @ block
     for _ in range(5):
-        if spread < PARALLEL:
-            if against is not None and against.shape[1]:
-                block = block - against @ (against.T @ heavy)
-            # Rounding has grown in what the last pass divided by little.
+        # Rounding grows where a pass divides by little.
+        if spread < PARALLEL and against is not None and against.shape[1]:
+            block = block - against @ (against.T @ heavy)
+            heavy = mass @ block
+        elif 0.0 < spread < PARALLEL:
             heavy = mass @ block
         step = _triangle(block, heavy)
         block, heavy, total, spread = step.vector, step.heavy, step.factor @ total, step.spread

@@ -79,23 +79,35 @@ def _remove(block: Array, known: Array, mass_known: Array) -> Array:
     return block - known @ (mass_known.T @ block) if known.shape[1] else block
 
 
-def _polish(pencil: Pencil, factor: Factor, rigid: Array, vector: Array, rounds: int) -> tuple[Array, Array]:
+@dataclass(frozen=True, slots=True)
+class _Pairs:
+    # value (m,), vector (n, m), M vector and K vector (n, m).
+    value: Array
+    vector: Array
+    heavy: Array
+    stiff: Array
+
+    def first(self, count: int) -> _Pairs:
+        return _Pairs(self.value[:count], self.vector[:, :count], self.heavy[:, :count], self.stiff[:, :count])
+
+
+def _polish(pencil: Pencil, factor: Factor, rigid: Array, vector: Array, rounds: int) -> _Pairs:
     """Inverse iteration, which takes high-frequency rounding out, then Rayleigh-Ritz."""
-    mass_rigid = pencil.mass @ rigid
-    value = np.empty(0)
-    for _ in range(rounds if vector.shape[1] else 0):
-        vector = _remove(factor.solve(pencil.mass @ vector), rigid, mass_rigid)
-        vector = orthonormal(vector, pencil.mass, rigid).vector
-        energy = vector.T @ (pencil.stiffness @ vector)
+    pairs = _Pairs(np.empty(0), vector, vector, vector)
+    for number in range(rounds if vector.shape[1] else 0):
+        heavy = pairs.heavy if number else pencil.mass @ vector
+        block = orthonormal(factor.solve(heavy), pencil.mass, rigid)
+        stiff = pencil.stiffness @ block.vector
+        energy = block.vector.T @ stiff
         value, turn = graded_eigh(0.5 * (energy + energy.T))
-        vector = vector @ turn
-    return value, vector
+        pairs = _Pairs(value, block.vector @ turn, block.heavy @ turn, stiff @ turn)
+    return pairs
 
 
-def _residual(pencil: Pencil, factor: Factor, rigid: Array, value: Array, vector: Array) -> Array:
+def _residual(pencil: Pencil, factor: Factor, rigid: Array, pairs: _Pairs) -> Array:
     # |K x - v M x| / |K x| in the norm of (K + s M)^-1, where |K x| = v / sqrt(v + s).
-    shift = pencil.small_shift
-    rest = pencil.stiffness @ vector - (pencil.mass @ vector) * value
+    shift, value = pencil.small_shift, pairs.value
+    rest = pairs.stiff - pairs.heavy * value
     answer = _remove(factor.solve(rest), rigid, pencil.mass @ rigid)
     square = np.maximum(np.einsum("ij,ij->j", rest, answer), 0.0)
     size: Array = np.sqrt(square * (value + shift)) / value
@@ -208,17 +220,17 @@ def lowest(pencil: Pencil, *, most: int, top: float, free: bool) -> Spectrum:
         return _whole(pencil, factor, rigid, most=most, top=top)
     vector = _sparse(pencil, factor, known=rigid, need=most + 1, top=top, generator=generator)
     for _ in range(3):
-        value, vector = _polish(pencil, factor, rigid, vector, 1)
-        keep = cut(value, most=most, top=top)
-        count = count_below(pencil, _between(value, keep, top))
+        pairs = _polish(pencil, factor, rigid, vector, 1)
+        keep = cut(pairs.value, most=most, top=top)
+        count = count_below(pencil, _between(pairs.value, keep, top))
         missing = 0 if count is None else count - rigid.shape[1] - keep
         if missing == 0:
-            return _finish(pencil, factor, rigid, value, vector, keep=keep, proved=count is not None)
+            return _finish(pencil, factor, rigid, pairs, keep=keep, proved=count is not None)
         if missing < 0:
             break
-        known = np.hstack([rigid, vector])
+        known = np.hstack([rigid, pairs.vector])
         more = _sparse(pencil, factor, known=known, need=missing, top=top, generator=generator)
-        vector = np.hstack([vector, more])
+        vector = np.hstack([pairs.vector, more])
     raise ModesError(
         what=f"{keep} modes were found where counting pivots shows {count - rigid.shape[1] if count else 0}",
         where=pencil.where,
@@ -231,20 +243,18 @@ def _whole(pencil: Pencil, factor: Factor, rigid: Array, *, most: int, top: floa
     rough = np.einsum("ij,ij->j", vector, pencil.stiffness @ vector)
     # A few more than wanted, so that the polish does not mix in what lies just above.
     enough = min(cut(np.maximum.accumulate(rough), most=most, top=top) + 2 * WIDTH, vector.shape[1])
-    value, vector = _polish(pencil, factor, rigid, vector[:, :enough], 2)
-    keep = cut(value, most=most, top=top)
-    return _finish(pencil, factor, rigid, value, vector, keep=keep, proved=True)
+    pairs = _polish(pencil, factor, rigid, vector[:, :enough], 2)
+    keep = cut(pairs.value, most=most, top=top)
+    return _finish(pencil, factor, rigid, pairs, keep=keep, proved=True)
 
 
-def _finish(
-    pencil: Pencil, factor: Factor, rigid: Array, value: Array, vector: Array, *, keep: int, proved: bool
-) -> Spectrum:
-    kept = vector[:, :keep]
+def _finish(pencil: Pencil, factor: Factor, rigid: Array, pairs: _Pairs, *, keep: int, proved: bool) -> Spectrum:
+    kept = pairs.first(keep)
     return Spectrum(
         rigid=rigid,
-        value=value[:keep],
-        vector=kept,
-        residual=_residual(pencil, factor, rigid, value[:keep], kept),
-        beyond=float(value[keep]) if keep < len(value) else np.inf,
+        value=kept.value,
+        vector=kept.vector,
+        residual=_residual(pencil, factor, rigid, kept),
+        beyond=float(pairs.value[keep]) if keep < len(pairs.value) else np.inf,
         proved=proved,
     )
