@@ -61,7 +61,9 @@ class SurfaceSpot:
     ``point_m`` (3,) and outward ``normal`` (3,) in the body frame; ``curvature_1_m`` the two principal
     curvatures (positive convex, 0 flat); ``young_pa`` and ``poisson`` of the material under the
     point (``inf`` where the skin is too thin to have a compliance of its own);
-    ``thickness_m`` the local thickness.
+    ``thickness_m`` the local thickness. ``mobility_power``: the power of frequency that the mean mobility follows
+    beyond the mesh, where it is known better than a mesh can tell (0 on a plate, whose impedance is
+    8 sqrt(D rho h)); None: as the static compliance has it.
     """
 
     point_m: Array
@@ -70,6 +72,7 @@ class SurfaceSpot:
     young_pa: float
     poisson: float
     thickness_m: float
+    mobility_power: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

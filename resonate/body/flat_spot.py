@@ -66,8 +66,16 @@ def _upper(spec: BodySpec, layout: FlatLayout, place: Array, side: float) -> Sur
     point = np.array([place[0], side * 0.5 * layout.thickness_m, place[1]])
     normal = np.array([0.0, side, 0.0])
     # A stretched skin is too thin to be pressed in: all the local give is the striker's.
-    young = np.inf if layout.tension_n_m else spec.material.young_pa[2]
-    return SurfaceSpot(point, normal, (0.0, 0.0), young, spec.material.poisson[0], layout.thickness_m)
+    skin = layout.tension_n_m > 0.0
+    return SurfaceSpot(
+        point_m=point,
+        normal=normal,
+        curvature_1_m=(0.0, 0.0),
+        young_pa=np.inf if skin else spec.material.young_pa[2],
+        poisson=spec.material.poisson[0],
+        thickness_m=layout.thickness_m,
+        mobility_power=None if skin else 0.0,
+    )
 
 
 def flat_spot(spec: BodySpec, layout: FlatLayout, spot: SpotSpec, middle_m: Array) -> SurfaceSpot:

@@ -234,8 +234,11 @@ def _warnings(body: Body, omega: Array, *, whole: bool, asked: float, next_hz: f
     frequency_hz = omega / (2.0 * np.pi)
     if not whole:
         reach = f"up to {frequency_hz[-1]:.0f} Hz" if len(omega) else "none of a cluster"
+        heard_hz, last_hz = body.bands.heard_hz, float(frequency_hz[-1]) if len(omega) else 0.0
+        deaf = f"nothing is heard from there to {heard_hz:.0f} Hz"
+        said = deaf if last_hz < heard_hz else f"{asked:.0f} Hz was asked"
         notes.append(
-            f"{len(omega)} modes are kept, {reach}; {asked:.0f} Hz was asked "
+            f"{len(omega)} modes are kept, {reach}; {said} "
             f"(the next mode is at {next_hz:.0f} Hz; modes.most = {body.bands.most})"
         )
     first_hz = float(frequency_hz[0]) if len(omega) else next_hz

@@ -44,13 +44,15 @@ class Blow:
     point_m, inward : Array
         (3,) the spot and the unit vector into the body there, in the body frame.
     direction : Array or None
-        (3,) unit direction of the push in the world; None: along the inward normal at the first touch.
+        (3,) unit direction of the striker's way in the world; None: along the inward normal at the first touch.
     angle_rad : float
-        By how much the push leans away from the inward normal.
+        By how much its way leans away from the inward normal.
     gains : Array
         (3, m + r) motion of the spot along body x, y, z by every elastic mode and rigid motion, kg**-0.5.
     give_m_n : Array
         (3, 3) static compliance of the modes left out, in the body frame, m/N.
+    mobility_power : float or None
+        How the mobility of those goes on with frequency, where that is known.
     mass_kg, speed_m_s, stiffness, loss_s_m : float
         Of the striker and its contact: F = K delta^1.5 (1 + mu delta').
     thickness_m : float
@@ -66,14 +68,15 @@ class Blow:
     angle_rad: float
     gains: Array
     give_m_n: Array
+    mobility_power: float | None
     mass_kg: float
     speed_m_s: float
     stiffness: float
     loss_s_m: float
     thickness_m: float
 
-    def axis(self, to_body: Array) -> Array:
-        """Unit direction of the push (3,) in the body frame; ``to_body`` (3, 3) takes world vectors there.
+    def way(self, to_body: Array) -> Array:
+        """Unit direction (3,) in which the striker comes, in the body frame; ``to_body`` takes world vectors there.
 
         With both given, it leans from the inward normal towards ``direction``; with an angle alone towards the
         body's +x, or its +z on an end face.
@@ -114,6 +117,10 @@ def _stepped(radius_m: float) -> float:
     Two rungs an octave: the mean over a plate depends on the logarithm of the radius alone.
     """
     return float(2.0 ** (0.5 * np.round(2.0 * np.log2(radius_m))))
+
+
+def _closing(spec: StrikeSpec) -> float:
+    return spec.speed_m_s * float(np.cos(spec.angle_rad))
 
 
 def _touched(body: Body, spots: Sequence[SurfaceSpot], radii_m: Sequence[float]) -> list[Array]:
@@ -180,7 +187,7 @@ def make_blows(
     if not strikes:
         return []
     radii = [
-        _stepped(local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, spec.speed_m_s).depth_m))
+        _stepped(local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, _closing(spec)).depth_m))
         for (_, spec), local in zip(strikes, locals_, strict=True)
     ]
     rows = _touched(body, spots, radii)
@@ -196,6 +203,7 @@ def make_blows(
             angle_rad=spec.angle_rad,
             gains=np.hstack((three @ modes.shape, three @ modes.rigid)),
             give_m_n=give,
+            mobility_power=spot.mobility_power,
             mass_kg=spec.striker.mass_kg,
             speed_m_s=spec.speed_m_s,
             stiffness=local.stiffness,

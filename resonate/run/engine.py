@@ -11,7 +11,7 @@ from resonate.errors import Fault, RunError
 from resonate.run.blow import make_blows
 from resonate.run.course import Course, follow
 from resonate.run.flight import fly, matrix
-from resonate.run.limits import beyond_linear
+from resonate.run.limits import beyond_kept, beyond_linear
 from resonate.run.record import Event, Ledger, Record, RigidState
 from resonate.run.subject import Subject
 from resonate.run.track import BodyTrack
@@ -67,6 +67,7 @@ def run(scene: Scene, bodies: Sequence[Body], modes: Sequence[ModeSet], *, store
             tracks.append(_track(subject, course))
             events.extend(course.events)
             ledger = ledger.plus(course.ledger)
+            warnings.extend(beyond_kept(found, course.ledger))
             warnings.extend(beyond_linear(tracks[-1], body, course.events))
         if faults:
             raise RunError(faults=tuple(faults))

@@ -44,7 +44,7 @@ def stretch(subject: Subject, moving: Moving, q: Array, v: Array, *, work: Array
     """
     before = 0.5 * (moving.v**2 + (moving.omega * moving.q) ** 2)
     gone = work - (0.5 * (v**2 + (moving.omega * q) ** 2) - before)
-    stands = gone[moving.body : moving.body + 2 * len(lost) : 2]
+    stands = [float(np.sum(gone[moving.stand(number)])) for number in range(len(lost))]
     return replace(
         split(subject, gone[: subject.elastic]),
         lost_contact=float(np.sum(lost)),

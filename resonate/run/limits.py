@@ -10,11 +10,14 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from resonate.body.body import Body
-    from resonate.run.record import Event
+    from resonate.modes.modeset import ModeSet
+    from resonate.run.record import Event, Ledger
     from resonate.run.track import BodyTrack
 
 # Turning faster than this share of the first mode splits and shifts it.
 SPIN = 0.02
+# Share of the energy of its strikes that may go where nothing is heard before it is said.
+UNHEARD = 0.01
 _LOOKS = 256
 _POINTS = 150
 
@@ -47,6 +50,17 @@ def _bent(track: BodyTrack, body: Body, strike: int) -> float:
     sway = np.stack([np.broadcast_to(axis, arms.shape) for axis in np.eye(3)] + turns, axis=2).reshape(-1, 6)
     left = field - sway @ np.linalg.lstsq(sway, field, rcond=None)[0]
     return float(np.linalg.norm(left.reshape(-1, 3), axis=1).max())
+
+
+def beyond_kept(modes: ModeSet, ledger: Ledger) -> tuple[str, ...]:
+    """Warn about energy that went into modes which are not kept."""
+    if not modes.count or ledger.lost_truncation <= UNHEARD * ledger.scale:
+        return ()
+    share, top_hz = ledger.lost_truncation / ledger.scale, float(modes.frequency_hz[-1])
+    return (
+        f"body {modes.body!r}: {100.0 * share:.0f} % of the energy of its strikes goes into modes above {top_hz:.0f} "
+        "Hz, which it feels but nobody hears: raise modes.most to hear them",
+    )
 
 
 def beyond_linear(track: BodyTrack, body: Body, events: Sequence[Event]) -> tuple[str, ...]:

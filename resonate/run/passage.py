@@ -11,6 +11,7 @@ from resonate.errors import RunError
 from resonate.run import ledger as books
 from resonate.run import window
 from resonate.run.flight import kick_of
+from resonate.run.ladder import ladder
 from resonate.run.record import Ledger, Segment
 from resonate.run.subject import State
 from resonate.run.track import impulse_of, moved_by
@@ -101,23 +102,32 @@ class _Run:
     def _touching(self, blow: Blow, state: State) -> Hit:
         subject, rigid = self.subject, state.rigid
         to_body = subject.to_body(rigid)
-        axis = blow.axis(to_body)
-        if float(axis @ blow.inward) <= 1e-6:  # noqa: PLR2004 (grazing)
+        # Without friction a contact pushes along the normal, and only that part of the speed closes it.
+        axis, steep = blow.inward, float(blow.way(to_body) @ blow.inward)
+        if steep <= 1e-6:  # noqa: PLR2004 (grazing)
             raise RunError(
                 what="its direction points away from the surface at the spot",
                 where=self._where(blow),
                 fix="turn it round, or leave it out to strike along the inward normal",
             )
         body, row = subject.loaded(state), subject.row(blow, axis, rigid)
+        speed = steep * blow.speed_m_s
         hit = window.Hit(
             blow=blow,
-            # A striker moves along a line in the world, so a free body may turn under it.
+            # A contact keeps its normal in the world, so a free body may turn under it.
             axis=axis if rigid is None else to_body.T @ axis,
             power=window.LEAST_POWER,
+            ladder=ladder(
+                subject.modes.omega,
+                row[: subject.elastic],
+                give_m_n=float(axis @ blow.give_m_n @ axis),
+                power=blow.mobility_power,
+            ),
             joined_s=state.time_s,
-            closing_m_s=blow.speed_m_s - float(row @ body.v),
+            closing_m_s=speed - float(row @ body.v),
             place_m=subject.in_world(blow.point_m, rigid),
-            speed_m_s=blow.speed_m_s,
+            speed_m_s=speed,
+            aside_m_s=float(np.sqrt(max(0.0, blow.speed_m_s**2 - speed**2))),
         )
         power = self.powers.get(blow.strike) or window.first_power(hit, body.omega, row)
         return replace(hit, power=power)
@@ -153,7 +163,6 @@ class _Run:
             body,
             rows=np.stack([subject.row(hit.blow, axis, rigid) for hit, axis in zip(live, axes, strict=True)]),
             hits=live,
-            gives=np.array([axis @ hit.blow.give_m_n @ axis for hit, axis in zip(live, axes, strict=True)]),
         )
 
     def _pace(self, state: State) -> float:
@@ -219,7 +228,7 @@ class _Run:
         held = stepper.moving.stands(stepper.q, stepper.v)
         for hit, left, energy in zip(hits, gone, held, strict=True):
             if left:
-                kept = replace(Ledger.empty(), striker_left=0.5 * hit.blow.mass_kg * hit.speed_m_s**2)
+                kept = replace(Ledger.empty(), striker_left=hit.energy_j)
                 self.rest = replace(self.rest, ledger=self.rest.ledger.plus(kept))
                 here = replace(
                     here, ledger=here.ledger.plus(kept).plus(replace(kept, striker_left=0.0, lost_truncation=energy))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -10,12 +10,14 @@ import numpy as np
 from resonate.errors import RunError
 from resonate.run import hertz
 from resonate.run.kernels.march import LANES, march
+from resonate.run.ladder import NONE, RUNGS
 from resonate.run.propagator import coefficients
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.run.blow import Blow
+    from resonate.run.ladder import Ladder
     from resonate.run.subject import Loaded
 
     Array = NDArray[np.float64]
@@ -33,10 +35,16 @@ _SLIGHT = 0.01
 _QUIET_S, _QUIET_STEPS, _SAFE_S = 50e-6, 20, 0.5e-3
 # A contact that lasts longer than this is no strike.
 LONGEST_S = 0.5
-# Missing modes are carried by one heavily damped mode at this multiple of the highest solved one.
-_STAND_IN, _STAND_IN_ZETA = 2.0, 0.7
 # Time marched before the state is looked at, and least number of steps.
 _CHUNK_S, _CHUNK_STEPS = 1e-4, 32
+
+
+# What a contact brings along: its stand-ins and its striker.
+_EACH = RUNGS + 1
+
+
+def _still() -> Array:
+    return np.zeros(RUNGS)
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,8 +62,9 @@ class Hit:
     """One striker while it is about.
 
     ``axis`` (3,) of its push: in the world for a free body, in the frame of a supported one. ``joined_s``,
-    ``closing_m_s``: first touch; ``place_m`` (3,) of it in the world. ``speed_m_s`` along the axis and
-    ``penetration_m`` now; ``stand_q``, ``stand_v``: its stand-in mode. ``power``: the rate it asks for.
+    ``closing_m_s``: first touch; ``place_m`` (3,) of it in the world. ``speed_m_s`` along the axis,
+    ``aside_m_s`` across it, and ``penetration_m`` now; ``stand_q``, ``stand_v`` (r,) of its stand-ins on the
+    ``ladder``. ``power``: the rate it asks for.
     """
 
     blow: Blow
@@ -65,10 +74,17 @@ class Hit:
     closing_m_s: float
     place_m: Array
     speed_m_s: float
+    aside_m_s: float = 0.0
+    ladder: Ladder = NONE
     penetration_m: float = 0.0
-    stand_q: float = 0.0
-    stand_v: float = 0.0
+    stand_q: Array = field(default_factory=_still)
+    stand_v: Array = field(default_factory=_still)
     pieces: tuple[Piece, ...] = ()
+
+    @property
+    def energy_j(self) -> float:
+        """Kinetic energy of the striker now."""
+        return 0.5 * self.blow.mass_kg * (self.speed_m_s**2 + self.aside_m_s**2)
 
     @property
     def force_n(self) -> Array:
@@ -80,7 +96,7 @@ class Hit:
 class Moving:
     """All that moves in a stretch of constant contacts, each of unit modal mass, (n,) padded with zeros.
 
-    First the body's ``body`` modes and motions, then a stand-in and a striker for each contact. ``rows`` (k, n):
+    First the body's ``body`` modes and motions, then the stand-ins and the striker of each contact. ``rows`` (k, n):
     contact j closes by ``-rows[j] @ q``; ``elastic`` marks the body's modes with stiffness.
     """
 
@@ -93,22 +109,21 @@ class Moving:
     body: int
     elastic: NDArray[np.bool_]
 
+    def stand(self, number: int) -> slice:
+        """Places of the stand-ins of contact ``number``; its striker comes next."""
+        at = self.body + _EACH * number
+        return slice(at, at + RUNGS)
+
     def stands(self, q: Array, v: Array) -> Array:
         """Energy (k,) that the stand-ins hold in a state, J."""
-        at = slice(self.body, self.body + 2 * len(self.rows), 2)
-        return np.asarray(0.5 * (v[at] ** 2 + (self.omega[at] * q[at]) ** 2))
+        held = 0.5 * (v**2 + (self.omega * q) ** 2)
+        return np.array([float(np.sum(held[self.stand(number)])) for number in range(len(self.rows))])
 
 
-def stand_in(give_m_n: float, top_omega: float) -> tuple[float, float, float]:
-    """Frequency, decay and gain of the mode that carries a missing compliance."""
-    omega = _STAND_IN * top_omega
-    return omega, _STAND_IN_ZETA * omega, omega * float(np.sqrt(give_m_n))
-
-
-def gather(body: Loaded, *, rows: Array, hits: tuple[Hit, ...], gives: Array) -> Moving:
-    """Put a body (b,) and its strikers side by side; ``rows`` (k, b) gains, ``gives`` (k,) m/N of stand-ins."""
+def gather(body: Loaded, *, rows: Array, hits: tuple[Hit, ...]) -> Moving:
+    """Put a body (b,) and its strikers side by side; ``rows`` (k, b) gains."""
     size, count = len(body.omega), len(hits)
-    total = -(-(size + 2 * count) // LANES) * LANES
+    total = -(-(size + _EACH * count) // LANES) * LANES
     padded = [np.zeros(total) for _ in range(5)]
     for whole, part in zip(padded, (body.omega, body.decay, body.load, body.q, body.v), strict=True):
         whole[:size] = part
@@ -116,15 +131,16 @@ def gather(body: Loaded, *, rows: Array, hits: tuple[Hit, ...], gives: Array) ->
     wide[:, :size] = rows
     stiff = np.zeros(total, dtype=bool)
     stiff[:size] = body.omega > 0.0
-    top = float(np.max(body.omega, initial=0.0))
+    moving = Moving(padded[0], padded[1], padded[2], wide, padded[3], padded[4], size, stiff)
     for number, hit in enumerate(hits):
-        at = size + 2 * number
-        padded[0][at], padded[1][at], wide[number, at] = stand_in(gives[number], top)
-        padded[3][at], padded[4][at] = hit.stand_q, hit.stand_v
+        at, stands = moving.stand(number), hit.ladder
+        moving.omega[at], moving.decay[at] = stands.omega, stands.decay
+        wide[number, at] = stands.gain
+        moving.q[at], moving.v[at] = hit.stand_q, hit.stand_v
         root = np.sqrt(hit.blow.mass_kg)
-        wide[number, at + 1] = -1.0 / root
-        padded[4][at + 1] = hit.speed_m_s * root
-    return Moving(padded[0], padded[1], padded[2], wide, padded[3], padded[4], size, stiff)
+        wide[number, at.stop] = -1.0 / root
+        moving.v[at.stop] = hit.speed_m_s * root
+    return moving
 
 
 class Stepper:
@@ -173,15 +189,15 @@ class Stepper:
         force, depth = np.concatenate(self.forces, axis=1), np.concatenate(self.depths, axis=1)
         found = []
         for number, hit in enumerate(self.hits):
-            stand = self.moving.body + 2 * number
+            stand = self.moving.stand(number)
             piece = Piece(begin_s, self.step_s, force[number], depth[number])
             found.append(
                 replace(
                     hit,
-                    speed_m_s=float(self.v[stand + 1]) / float(np.sqrt(hit.blow.mass_kg)),
+                    speed_m_s=float(self.v[stand.stop]) / float(np.sqrt(hit.blow.mass_kg)),
                     penetration_m=float(self.delta[number]),
-                    stand_q=float(self.q[stand]),
-                    stand_v=float(self.v[stand]),
+                    stand_q=self.q[stand].copy(),
+                    stand_v=self.v[stand].copy(),
                     pieces=(*hit.pieces, piece),
                 )
             )
@@ -207,13 +223,12 @@ class Stepper:
         """Whether a striker has left: out of reach of the ringing for a while to come, and not coming back."""
         if self.quiet_s(number) < max(_QUIET_S, _QUIET_STEPS * self.step_s):
             return False
-        row, stiff, body = self.moving.rows[number], self.moving.elastic, self.moving.body
+        row, stiff, stand = self.moving.rows[number], self.moving.elastic, self.moving.stand(number)
         omega, decay = self.moving.omega[stiff], self.moving.decay[stiff]
         q, v = self.q[stiff], self.v[stiff]
         # |q| <= |z| / wd from now on.
         reach = float(np.abs(row[stiff]) @ np.hypot(q, (v + decay * q) / np.sqrt((omega - decay) * (omega + decay))))
-        stand = body + 2 * number
-        gap = -float(self.delta[number]) - float(row[stiff] @ q) - float(row[stand] * self.q[stand])
+        gap = -float(self.delta[number]) - float(row[stiff] @ q) - float(row[stand] @ self.q[stand])
         whole = self.moving.omega == 0.0
         opening, pull = float(row[whole] @ self.v[whole]), float(row @ self.moving.load)
         looks = [0.0, _SAFE_S]

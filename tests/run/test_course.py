@@ -35,12 +35,12 @@ def march_at(subject, blow, rate_hz, duration_s):
     state = subject.first()
     body, row = subject.loaded(state), subject.row(blow, blow.inward, None)
     hit = window.Hit(blow, blow.inward, 2, 0.0, blow.speed_m_s, np.zeros(3), blow.speed_m_s)
-    moving = window.gather(body, rows=row[None], hits=(hit,), gives=np.zeros(1))
+    moving = window.gather(body, rows=row[None], hits=(hit,))
     stepper = window.Stepper(moving, (hit,), 1.0 / rate_hz, "bar")
     stepper.march(round(duration_s * rate_hz))
     m = subject.elastic
     z = to_state(stepper.q[:m], stepper.v[:m], subject.modes.omega, subject.modes.decay.total)
-    speed = stepper.v[moving.body + 1] / np.sqrt(blow.mass_kg)
+    speed = stepper.v[moving.stand(0).stop] / np.sqrt(blow.mass_kg)
     return np.abs(z), speed, int(np.sum(stepper.forces[0] > 0.0))
 
 
@@ -95,9 +95,7 @@ def test_flight_after_contact_equals_steps_all_along(kit):
     step_s = next(part.step_s for part in course.segments if part.is_contact)
     state = subject.first()
     hit = window.Hit(blow, blow.inward, 2, 0.0, 1.0, np.zeros(3), 1.0)
-    moving = window.gather(
-        subject.loaded(state), rows=subject.row(blow, blow.inward, None)[None], hits=(hit,), gives=np.zeros(1)
-    )
+    moving = window.gather(subject.loaded(state), rows=subject.row(blow, blow.inward, None)[None], hits=(hit,))
     stepper = window.Stepper(moving, (hit,), step_s, "bar")
     m = subject.elastic
     worst = 0.0
@@ -295,17 +293,34 @@ def test_contact_that_never_ends_is_refused(kit):
     assert "strike[4] on body 'deck plate'" in str(caught.value)
 
 
-def test_leaning_push(kit):
+def test_leaning_way(kit):
     lean = 0.5
     blow = kit.blow([1.0], angle_rad=lean)
-    axis = blow.axis(np.eye(3))
+    axis = blow.way(np.eye(3))
     # Towards the body's +x; towards a given direction if there is one.
     np.testing.assert_allclose(axis, [np.sin(lean), -np.cos(lean), 0.0], atol=1e-15)
-    toward = kit.blow([1.0], angle_rad=lean, direction=np.array([0.0, -0.6, 0.8])).axis(np.eye(3))
+    toward = kit.blow([1.0], angle_rad=lean, direction=np.array([0.0, -0.6, 0.8])).way(np.eye(3))
     np.testing.assert_allclose(toward, [0.0, -np.cos(lean), np.sin(lean)], atol=1e-15)
-    np.testing.assert_allclose(kit.blow([1.0], direction=np.array([0.0, -0.6, 0.8])).axis(np.eye(3)), [0.0, -0.6, 0.8])
-    end = kit.blow([1.0], angle_rad=lean, inward=np.array([-1.0, 0.0, 0.0])).axis(np.eye(3))
+    np.testing.assert_allclose(kit.blow([1.0], direction=np.array([0.0, -0.6, 0.8])).way(np.eye(3)), [0.0, -0.6, 0.8])
+    end = kit.blow([1.0], angle_rad=lean, inward=np.array([-1.0, 0.0, 0.0])).way(np.eye(3))
     np.testing.assert_allclose(end, [-np.cos(lean), 0.0, np.sin(lean)], atol=1e-15)
+
+
+@pytest.mark.parametrize("lean", [0.0, 0.5, 1.2, 1.5])
+def test_without_friction_only_the_normal_part_of_the_speed_pushes(kit, lean):
+    # Goldsmith, Impact (1960), ch. 2: smooth bodies exchange momentum along their common normal alone.
+    subject = kit.subject(kit.modes([], 0.0), free=True, mass_kg=2.0)
+    gains = np.zeros((3, 0))
+    slanted = kit.blow([0.0], gains=gains, mass_kg=0.01, speed_m_s=2.0, angle_rad=lean)
+    straight = kit.blow([0.0], gains=gains, mass_kg=0.01, speed_m_s=2.0 * np.cos(lean))
+
+    course, same = (follow(subject, [blow], end_s=0.1) for blow in (slanted, straight))
+
+    assert course.events[0].impulse_ns == pytest.approx(same.events[0].impulse_ns, rel=1e-12)
+    assert course.events[0].peak_n == pytest.approx(same.events[0].peak_n, rel=1e-12)
+    np.testing.assert_allclose(course.segments[-1].rigid.speed_m_s[[0, 2]], 0.0, atol=1e-18)
+    assert course.ledger.given == pytest.approx(0.5 * 0.01 * 4.0)
+    assert abs(course.ledger.residual) < 1e-12 * course.ledger.scale
 
 
 def test_silence_before_the_first_strike(kit):

@@ -243,8 +243,15 @@ def test_beyond_what_is_linear_is_said_with_numbers():
     record = run_of(scene_of(hard, bar="spin = [0, 0, 400]\nfloating = true"))
     assert any("call bar" in note and "turns at 400 rad/s" in note for note in record.warnings)
     assert any("lid" in note and "strike[0] deflects it by" in note and "mm" in note for note in record.warnings)
-    calm = run_of(scene_of(BAR_STRIKE, LID_STRIKE))
-    assert calm.warnings == ()
+    soft = LID_STRIKE.replace("steel ball", "felt medium")
+    assert run_of(scene_of(BAR_STRIKE, soft)).warnings == ()
+
+
+def test_what_truncation_takes_is_said():
+    record = run_of(scene_of(LID_STRIKE))
+
+    share = record.ledger.lost_truncation / record.ledger.scale
+    assert any(f"body 'lid': {100 * share:.0f} % of the energy" in note for note in record.warnings)
 
 
 def test_refused_strikes_say_which_and_how_to_fix(struck):
