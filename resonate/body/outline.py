@@ -34,6 +34,10 @@ _BULGE = 0.12
 _BENT = 0.05
 # An element may be this share larger than asked before one more is laid.
 _SLACK = 0.25
+# Opposite sides that differ by more than this are not joined by one map: it would crowd elements at the short one.
+_TAPER = 2.0
+# From so many elements along, one across is enough if it spans the waves.
+_STRIP = 8
 
 
 @dataclass(frozen=True, slots=True)
@@ -155,11 +159,18 @@ def _ring(outer: float, inner: float, radial: int, round_about: int, order: int)
 def _polygon(corners: Array, size_m: float, order: int) -> Array:
     if len(corners) == 4 and _convex(corners):  # noqa: PLR2004 (four corners)
         sides = np.linalg.norm(np.roll(corners, -1, axis=0) - corners, axis=1)
-        first = max(2, int(np.ceil(max(sides[0], sides[2]) / size_m - _SLACK)))
-        second = max(2, int(np.ceil(max(sides[1], sides[3]) / size_m - _SLACK)))
-        return _patch(_bilinear(corners), first, second, order)
+        if max(sides[0] / sides[2], sides[2] / sides[0], sides[1] / sides[3], sides[3] / sides[1]) < _TAPER:
+            first, second = _counts(max(sides[0], sides[2]) / size_m, max(sides[1], sides[3]) / size_m)
+            return _patch(_bilinear(corners), first, second, order)
     pieces = quadrilaterals(corners, size_m)
     return np.concatenate([_patch(_bilinear(quad), count, count, order) for quad, count in pieces])
+
+
+def _counts(along: float, across: float) -> tuple[int, int]:
+    """Elements along two sides: two at least, one across a strip."""
+    first, second = (max(1, int(np.ceil(ratio - _SLACK))) for ratio in (along, across))
+    strip = max(first, second) >= _STRIP
+    return (first, second) if strip else (max(2, first), max(2, second))
 
 
 def _convex(corners: Array) -> bool:
@@ -181,8 +192,7 @@ def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
     """
     low, high = box(outline)
     if isinstance(outline, RectangleOutline):
-        first = max(2, int(np.ceil(outline.a_m / size_m[0] - _SLACK)))
-        second = max(2, int(np.ceil(outline.b_m / size_m[1] - _SLACK)))
+        first, second = _counts(outline.a_m / size_m[0], outline.b_m / size_m[1])
         corners = np.array([low, [high[0], low[1]], high, [low[0], high[1]]])
         return weld(_patch(_bilinear(corners), first, second, order), order)
     size = min(size_m)

@@ -81,11 +81,11 @@ def orthonormal(block: Array, mass: csr_matrix, against: Array | None = None) ->
     total = np.eye(block.shape[1])
     spread, heavy = 0.0, mass @ block
     for _ in range(5):
-        # Rounding grows where a pass divides by little.
+        if 0.0 < spread < PARALLEL:
+            # The last pass has divided by little, and what it made of `heavy` is not M times the block any more.
+            heavy = mass @ block
         if spread < PARALLEL and against is not None and against.shape[1]:
             block = block - against @ (against.T @ heavy)
-            heavy = mass @ block
-        elif 0.0 < spread < PARALLEL:
             heavy = mass @ block
         step = _triangle(block, heavy)
         block, heavy, total, spread = step.vector, step.heavy, step.factor @ total, step.spread

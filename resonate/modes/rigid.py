@@ -27,6 +27,8 @@ NOISE = 100.0
 LOUD_NOISE = 1e4
 CLEAR = 1e3
 ITERATIONS = 4
+# Eigenvalues this far below the largest of the block are settled by so many iterations.
+SLOW = 1e-3
 
 
 def rounding(pencil: Pencil, vector: Array) -> Array:
@@ -77,6 +79,26 @@ def rigid_motions(
     Array
         (n, r), M-orthonormal, kg**-0.5.
     """
+    return softest(pencil, solve, free=free, generator=generator)[0]
+
+
+def softest(
+    pencil: Pencil,
+    solve: Callable[[Array], Array],
+    *,
+    free: bool,
+    generator: np.random.Generator,
+) -> tuple[Array, Array]:
+    """Find rigid motions as above, and motions that are softer than all others by far.
+
+    The swings of a body on cords are so slow that rounding in them would drown the inverse of the stiffness for all
+    other modes: they are better known beforehand.
+
+    Returns
+    -------
+    tuple of Array
+        Rigid motions (n, r), and those slow ones (n, s), M-orthonormal together.
+    """
     width = min(2 * FREE_COUNT, pencil.size)
     while True:
         block = orthonormal(generator.standard_normal((pencil.size, width)), pencil.mass).vector
@@ -89,5 +111,8 @@ def rigid_motions(
         value, block = value[order], block[:, order]
         count = _how_many(value, rounding(pencil, block), free=free)
         if count < width or width == pencil.size:
-            return orthonormal(block[:, :count], pencil.mass).vector if count else block[:, :0]
+            # Iterations have settled what lies so far below the rest of the block.
+            slow = count + int(np.count_nonzero(value[count:] < SLOW * value[-1]))
+            both = orthonormal(block[:, :slow], pencil.mass).vector if slow else block[:, :0]
+            return both[:, :count], both[:, count:]
         width = min(2 * width, pencil.size)

@@ -13,7 +13,7 @@ from resonate.errors import ModesError
 from resonate.modes.factor import DENSE_LIMIT, Factor, factorise
 from resonate.modes.lanczos import lanczos, orthonormal
 from resonate.modes.pencil import check_mass
-from resonate.modes.rigid import rigid_motions
+from resonate.modes.rigid import softest
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -214,11 +214,13 @@ def lowest(pencil: Pencil, *, most: int, top: float, free: bool) -> Spectrum:
             fix="look for compression (a negative tension) or a material that is not positive definite",
         )
     generator = np.random.default_rng(SEED)
-    rigid = rigid_motions(pencil, factor.solve, free=free, generator=generator)
+    rigid, slow = softest(pencil, factor.solve, free=free, generator=generator)
     elastic = pencil.size - rigid.shape[1]
     if pencil.size <= DENSE_LIMIT or 4 * min(most, elastic) > pencil.size:
         return _whole(pencil, factor, rigid, most=most, top=top)
-    vector = _sparse(pencil, factor, known=rigid, need=most + 1, top=top, generator=generator)
+    known = np.hstack([rigid, slow])
+    rest = _sparse(pencil, factor, known=known, need=most + 1, top=top, generator=generator)
+    vector = np.hstack([slow, rest])
     for _ in range(3):
         pairs = _polish(pencil, factor, rigid, vector, 1)
         keep = cut(pairs.value, most=most, top=top)

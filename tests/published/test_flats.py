@@ -276,3 +276,16 @@ def test_foil_keeps_the_frequencies_of_a_thin_plate(thickness):
     values = hertz(RECTANGLES["free square"][1], thickness=thickness)
 
     assert worst(of_kind(solve(body), *PLATE["bending"]), values) < 1e-3
+
+
+def test_hung_disc_swings_as_a_pendulum_and_rings_as_if_free():
+    # Simple pendulum sqrt(g/l), twice; a thin cord touches the ringing by less than 1e-4. All modes, however far apart
+    # they lie from the swings, are found without a warning of accuracy.
+    outline, size = "{circle = 0.1}", {"thickness": 0.002}
+    cord = 'support = [{where = {point = [0, 0.001, 0]}, hold = {cord = "0.3 m"}}]'
+
+    hung, free = solve(plate(outline, **size, support=cord)), solve(plate(outline, **size))
+
+    assert worst(hung.hz, 2 * [np.sqrt(9.80665 / 0.3) / (2 * np.pi)]) < 2e-3
+    assert worst(hung.hz[3:], list(free.hz[:2])) < 1e-4
+    assert len(hung.hz) > 150
