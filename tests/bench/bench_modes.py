@@ -136,6 +136,7 @@ class MatrixBody:
     bands: Bands
     name: str = "hatch cover"
     key: str = "bench"
+    held: bool = False
     free: bool = False
     loss: tuple[tuple[float, float], ...] = ((1.0, 0.0),)
     warnings: tuple[str, ...] = ()
@@ -151,6 +152,7 @@ class MatrixBody:
             mass=self.mass,
             basis=sp.csr_matrix(sp.identity(self.freedoms)),
             cords=None,
+            springs=None,
             damper_rows=sp.csr_matrix((0, self.freedoms)),
             damper_ns_m=np.zeros(0),
             heat=(),
