@@ -95,6 +95,22 @@ def outline(name):
     return polygon(CORNERS[name])
 
 
+def signed(name, flat):
+    """Signed distance (k,) of points (k, 2) from a sample outline."""
+    if name in ("circle", "ring"):
+        radius = np.linalg.norm(flat, axis=1)
+        return np.maximum(radius - 0.15, 0.06 - radius) if name == "ring" else radius - 0.15
+    corners = np.array(CORNERS.get(name, [(-0.2, -0.125), (0.2, -0.125), (0.2, 0.125), (-0.2, 0.125)]), dtype=float)
+    far, inner = np.full(len(flat), np.inf), np.zeros(len(flat), dtype=bool)
+    for a, b in zip(corners, np.roll(corners, -1, axis=0), strict=True):
+        along = np.clip((flat - a) @ (b - a) / ((b - a) @ (b - a)), 0.0, 1.0)
+        far = np.minimum(far, np.linalg.norm(flat - a - along[:, None] * (b - a), axis=1))
+        rises = (a[1] > flat[:, 1]) != (b[1] > flat[:, 1])
+        with np.errstate(divide="ignore", invalid="ignore"):
+            inner ^= rises & (flat[:, 0] < a[0] + (flat[:, 1] - a[1]) / (b[1] - a[1]) * (b[0] - a[0]))
+    return np.where(inner, -far, far)
+
+
 def plate(name, thickness_m, density):
     """Mass, centre and central tensor of a plate, its thickness included."""
     area, centre, (xx, zz, xz) = outline(name)

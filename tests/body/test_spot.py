@@ -50,23 +50,7 @@ def depth(name, points):
         ends = np.maximum(-points[:, 0], points[:, 0] - 0.4)
         return np.max([np.abs(points[:, 1]) - up, np.abs(points[:, 2]) - wide, ends], axis=0)
     over = np.abs(points[:, 1]) - THICK[name] / 2
-    return np.maximum(over, signed(outline(name), points[:, [0, 2]]))
-
-
-def signed(name, flat):
-    """Signed distance (k,) of points (k, 2) from a sample outline."""
-    if name in ("circle", "ring"):
-        radius = np.linalg.norm(flat, axis=1)
-        return np.maximum(radius - 0.15, 0.06 - radius) if name == "ring" else radius - 0.15
-    corners = np.array(exact.CORNERS.get(name, [(-0.2, -0.125), (0.2, -0.125), (0.2, 0.125), (-0.2, 0.125)]), dtype=float)
-    far, inner = np.full(len(flat), np.inf), np.zeros(len(flat), dtype=bool)
-    for a, b in zip(corners, np.roll(corners, -1, axis=0), strict=True):
-        along = np.clip((flat - a) @ (b - a) / ((b - a) @ (b - a)), 0.0, 1.0)
-        far = np.minimum(far, np.linalg.norm(flat - a - along[:, None] * (b - a), axis=1))
-        rises = (a[1] > flat[:, 1]) != (b[1] > flat[:, 1])
-        with np.errstate(divide="ignore", invalid="ignore"):
-            inner ^= rises & (flat[:, 0] < a[0] + (flat[:, 1] - a[1]) / (b[1] - a[1]) * (b[0] - a[0]))
-    return np.where(inner, -far, far)
+    return np.maximum(over, exact.signed(outline(name), points[:, [0, 2]]))
 
 
 def check(name, spot):
@@ -195,7 +179,7 @@ def test_places_off_the_body_are_refused_with_their_distance(name, point, far):
         body.spot(SpotSpec(point=point))
 
     (fault,) = caught.value.faults
-    far = signed(outline(name), np.array([[point[0], point[2]]]))[0] if far is None else far
+    far = exact.signed(outline(name), np.array([[point[0], point[2]]]))[0] if far is None else far
     told = float(fault.what.split(" lies ")[1].split(" m off")[0])
     assert_allclose(told, far, rtol=1e-5)
     assert "sample" in fault.where
