@@ -132,7 +132,7 @@ class FlatBody:
     @property
     def warnings(self) -> tuple[str, ...]:
         """What a person should know."""
-        return self.layout.warnings
+        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:
@@ -224,6 +224,19 @@ class FlatBody:
         count = len(np.atleast_2d(points_m))
         return self.motion(points_m)[(np.arange(count)[:, None] * 6 + np.arange(3)).ravel()]
 
+    def turn(self, point_m: Array) -> csr_matrix:
+        """Rotation (3, d) of the matter nearest to a point (3,); about y that of the middle face in its plane."""
+        element, local, _ = self.grid.locate(point_m[None, [0, 2]])
+        rows = self.motion(point_m)[3:].tolil()
+        if self.is_skin:
+            return rows.tocsr()
+        nodes = self.grid.elements[element[0]]
+        _, slope = basis(self.grid.order, local)
+        gradient = slope[0] @ np.linalg.inv(self.grid.nodes_m[nodes].T @ slope[0])
+        rows[1, nodes * self.fields] = 0.5 * gradient[:, 1]
+        rows[1, nodes * self.fields + 2] = -0.5 * gradient[:, 0]
+        return rows.tocsr()
+
     def unused(self) -> NDArray[np.int64]:
         """Every freedom moves."""
         return np.zeros(0, dtype=np.int64)
@@ -260,9 +273,10 @@ class FlatBody:
     def _nearest(self, point: Array) -> Array:
         _, _, miss = self.grid.locate(point[None, [0, 2]])
         size = float(np.ptp(self.grid.nodes_m, axis=0).max())
-        if max(float(miss[0]), abs(point[1]) - 0.5 * self.thickness_m) > 0.05 * size:
+        off = float(np.hypot(miss[0], max(abs(point[1]) - 0.5 * self.thickness_m, 0.0)))
+        if off > 0.05 * size:
             raise BodyError(
-                what=f"a support at {point.tolist()} m, {float(miss[0]):g} m off the body",
+                what=f"a support at {point.tolist()} m, {off:g} m off the body",
                 where=f"body {self.name!r}",
                 fix="give a point on the body, in its own frame",
             )
@@ -276,7 +290,8 @@ class FlatBody:
     def supports(self) -> Supports:
         """Supports over all freedoms."""
         weight = 0.0 if self.spec.floating else self.inertia.mass_kg * self.gravity_m_s2
-        return supports(self, self.spec.support, up=self.up, weight_n=weight, line=False)
+        centre = self.inertia.centre_m
+        return supports(self, self.spec.support, up=self.up, weight_n=weight, centre_m=centre, line=False)
 
     def forms(self) -> Forms:
         """Assemble T and V."""

@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from resonate.body.outline import Edge, area, cut, edges
+from resonate.body.polygon import openings
 from resonate.body.waves import bending_wavenumber, top_frequency
 from resonate.errors import BodyError
-from resonate.scene.model import MembraneShape, PlateShape
+from resonate.scene.model import FixHold, MembraneShape, NamedHold, NamedPlace, PlateShape, PolygonOutline
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -30,6 +31,10 @@ _BUDGET = 6000
 _MARGIN = 1.1
 # A plate thicker than this share of its smaller side is a block.
 _THICK = 0.5
+# A corner this little wider than the widest harmless one does no harm yet, rad.
+_OPENED = 0.1
+# Largest number of corners with small elements of their own.
+_GRADED = 24
 
 
 @dataclass(frozen=True)
@@ -124,10 +129,43 @@ def lay_flat(spec: BodySpec) -> FlatLayout:
             f"for; modes are resolved up to about {top / coarser**2:.0f} Hz",
         )
     size = tuple(2.0 * np.pi * ORDER / _NODES_PER_WAVE / wave * coarser for wave in (along, across))
-    grid = cut(shape.outline, size_m=(size[0], size[1]), order=ORDER)
+    graded, told = _singular(spec)
+    grid = cut(shape.outline, size_m=(size[0], size[1]), order=ORDER, graded=graded)
     tension = shape.tension_n_m if isinstance(shape, MembraneShape) else 0.0
     return FlatLayout(
-        shape.outline, grid, edges(shape.outline, grid), shape.thickness_m, tension, rigidity, warnings
+        shape.outline, grid, edges(shape.outline, grid), shape.thickness_m, tension, rigidity, warnings + told
+    )
+
+
+def _singular(spec: BodySpec) -> tuple[tuple[int, ...], tuple[str, ...]]:
+    """Corners of a polygon where the supports make stresses infinite, and a warning where they are too many.
+
+    Moments grow as r^(pi/a - 2) in a pinned corner that opens by a (Williams, J. Appl. Mech. 19 (1952) 526):
+    a right angle is the widest where they stay finite. Clamped corners, and skins, bear up to half a turn.
+    """
+    outline = spec.shape.outline if isinstance(spec.shape, PlateShape | MembraneShape) else None
+    if not isinstance(outline, PolygonOutline):
+        return (), ()
+    corners = np.array(outline.corners_m)
+    count = len(corners)
+    hinged, held = np.zeros(count, dtype=bool), np.zeros(count, dtype=bool)
+    for hold in spec.support:
+        if not isinstance(hold.where, NamedPlace) or not isinstance(hold.hold, NamedHold | FixHold):
+            continue
+        for name in hold.where.names:
+            sides = slice(None) if name == "edge" else int(name.removeprefix("edge")) - 1
+            held[sides] = True
+            clamped = isinstance(hold.hold, NamedHold) and hold.hold.kind in ("clamped", "guided")
+            hinged[sides] = isinstance(spec.shape, PlateShape) and not clamped
+    opening = openings(corners)
+    both = held & np.roll(held, 1)
+    wide = np.where(hinged | np.roll(hinged, 1), 0.5 * np.pi, np.pi)
+    found = np.flatnonzero(both & (opening > wide + _OPENED))
+    if len(found) <= _GRADED:
+        return tuple(found.tolist()), ()
+    return (), (
+        f"body {spec.name!r}: {len(found)} wide corners of a pinned outline are more than the {_GRADED} that can be "
+        "resolved; its lowest modes may lie a few percent high",
     )
 
 

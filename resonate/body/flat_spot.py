@@ -13,6 +13,7 @@ import numpy as np
 
 from resonate.body.body import SurfaceSpot
 from resonate.body.outline import box, contains
+from resonate.body.ray import leave
 from resonate.errors import BodyError
 from resonate.scene.model import CircleOutline, PolygonOutline, RingOutline
 
@@ -129,8 +130,5 @@ def _ray(layout: FlatLayout, toward: Array, middle: Array) -> tuple[Array, float
     limit = reach * float(np.linalg.norm(flat)) ** -1
     if toward[1] != 0.0:
         limit = min(limit, 0.5 * layout.thickness_m / abs(toward[1]))
-    steps = np.linspace(0.0, limit, 4001)
-    ray = centre + steps[:, None] * flat
-    inside = contains(layout.outline, ray)
-    last = int(np.argmin(inside)) - 1 if not inside.all() else len(ray) - 1
-    return ray[max(last, 0)], side
+    reach = leave(lambda steps: contains(layout.outline, centre + steps[:, None] * flat), limit)
+    return centre + reach * flat, side

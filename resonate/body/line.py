@@ -124,7 +124,7 @@ class LineBody:
     @property
     def warnings(self) -> tuple[str, ...]:
         """What a person should know."""
-        return self.layout.warnings
+        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:
@@ -223,6 +223,10 @@ class LineBody:
         count = len(np.atleast_2d(points_m))
         return self.motion(points_m)[(np.arange(count)[:, None] * FIELDS + np.arange(3)).ravel()]
 
+    def turn(self, point_m: Array) -> csr_matrix:
+        """Rotation (3, d) of the section nearest to a point (3,)."""
+        return self.motion(point_m)[3:]
+
     def unused(self) -> NDArray[np.int64]:
         """A string neither stretches nor twists."""
         if self.layout.tension_n == 0.0:
@@ -282,7 +286,7 @@ class LineBody:
     def supports(self) -> Supports:
         """Supports over all freedoms."""
         weight = 0.0 if self.spec.floating else self.inertia.mass_kg * self.gravity_m_s2
-        return supports(self, self.spec.support, up=self.up, weight_n=weight, line=True)
+        return supports(self, self.spec.support, up=self.up, weight_n=weight, centre_m=self.inertia.centre_m, line=True)
 
     def forms(self) -> Forms:
         """Assemble T and V."""

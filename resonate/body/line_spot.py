@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from resonate.body.body import SurfaceSpot
+from resonate.body.ray import leave
 from resonate.errors import BodyError
 
 if TYPE_CHECKING:
@@ -55,6 +56,15 @@ def _along(spec: BodySpec, layout: Layout, u: float, v: float) -> SurfaceSpot:
     return _flat_spot(spec, point, np.array([0.0, 1.0, 0.0]), 2.0 * half_up)
 
 
+def _on_end(layout: Layout, across: Array, half: Array) -> Array:
+    """Point (2,) of an end face nearest to ``across`` (2,)."""
+    if not layout.is_round:
+        return np.asarray(np.clip(across, -half, half))
+    radius = float(np.hypot(across[0], across[1]))
+    outward = across / radius if radius > 0.0 else np.array([1.0, 0.0])
+    return np.asarray(np.clip(radius, 0.5 * layout.inner_m, 0.5 * layout.outer_m) * outward)
+
+
 def _nearest(spec: BodySpec, layout: Layout, point: Array, *, check: bool) -> SurfaceSpot:
     x = float(np.clip(point[0], 0.0, layout.length_m))
     half_up, half_across = _half(layout, x)
@@ -75,9 +85,7 @@ def _nearest(spec: BodySpec, layout: Layout, point: Array, *, check: bool) -> Su
         side = gaps[axis]
     if over > max(side, -1e-9 * layout.length_m) or (over >= -1e-9 * layout.length_m and side < 0.0):
         normal = np.array([1.0 if point[0] > 0.5 * layout.length_m else -1.0, 0.0, 0.0])
-        end = np.array(
-            [x, np.clip(point[1], -half_up, half_up), np.clip(point[2], -half_across, half_across)]
-        )
+        end = np.array([x, *_on_end(layout, point[1:], np.array([half_up, half_across]))])
         spot = _flat_spot(spec, end, normal, layout.length_m)
     miss = float(np.linalg.norm(spot.point_m - point))
     inside = side < 0.0 and over < 0.0
@@ -106,12 +114,13 @@ def line_spot(spec: BodySpec, layout: Layout, spot: SpotSpec, centre_m: Array) -
     x_reach = np.inf
     if toward[0] != 0.0:
         x_reach = ((layout.length_m if toward[0] > 0 else 0.0) - centre_m[0]) / toward[0]
-    reach = np.linspace(0.0, min(x_reach, 2.0 * layout.length_m), 4001)
-    ray = centre_m + reach[:, None] * toward
-    section = layout.section_at(np.clip(ray[:, 0], 0.0, layout.length_m))
-    if layout.is_round:
-        within = np.hypot(ray[:, 1], ray[:, 2]) <= 0.5 * section.height
-    else:
-        within = (np.abs(ray[:, 1]) <= 0.5 * section.height) & (np.abs(ray[:, 2]) <= 0.5 * section.width)
-    last = int(np.argmin(within)) if not within.all() else len(ray) - 1
-    return _nearest(spec, layout, ray[last], check=False)
+    far = min(x_reach, 2.0 * layout.length_m)
+
+    def within(reach: Array) -> NDArray[np.bool_]:
+        ray = centre_m + reach[:, None] * toward
+        section = layout.section_at(np.clip(ray[:, 0], 0.0, layout.length_m))
+        if layout.is_round:
+            return np.asarray(np.hypot(ray[:, 1], ray[:, 2]) <= 0.5 * section.height)
+        return np.asarray((np.abs(ray[:, 1]) <= 0.5 * section.height) & (np.abs(ray[:, 2]) <= 0.5 * section.width))
+
+    return _nearest(spec, layout, centre_m + leave(within, far) * toward, check=False)

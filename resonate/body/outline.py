@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.body.polygon import quadrilaterals
+from resonate.body.polygon import grade, quadrilaterals
 from resonate.body.spectral import Grid, lagrange, lobatto, lobatto_weights, weld
 from resonate.errors import BodyError
 from resonate.scene.model import CircleOutline, PolygonOutline, RectangleOutline, RingOutline
@@ -156,7 +156,7 @@ def _ring(outer: float, inner: float, radial: int, round_about: int, order: int)
     return _patch(mapping, radial, round_about, order)
 
 
-def _polygon(corners: Array, size_m: float, order: int) -> Array:
+def _mapped(corners: Array, size_m: float, order: int) -> Array:
     if len(corners) == 4 and _convex(corners):  # noqa: PLR2004 (four corners)
         sides = np.linalg.norm(np.roll(corners, -1, axis=0) - corners, axis=1)
         if max(sides[0] / sides[2], sides[2] / sides[0], sides[1] / sides[3], sides[3] / sides[1]) < _TAPER:
@@ -164,6 +164,18 @@ def _polygon(corners: Array, size_m: float, order: int) -> Array:
             return _patch(_bilinear(corners), first, second, order)
     pieces = quadrilaterals(corners, size_m)
     return np.concatenate([_patch(_bilinear(quad), count, count, order) for quad, count in pieces])
+
+
+def _polygon(corners: Array, size_m: float, order: int, graded: tuple[int, ...]) -> Array:
+    elements = _mapped(corners, size_m, order)
+    if not graded:
+        return elements
+    # Every element is the bilinear map of its own corners.
+    n = order + 1
+    quads = elements[:, [0, n * order, n * n - 1, order]]
+    for number in graded:
+        quads = grade(quads, corners[number], float(np.ptp(corners, axis=0).max()))
+    return np.concatenate([_patch(_bilinear(quad), 1, 1, order) for quad in quads])
 
 
 def _counts(along: float, across: float) -> tuple[int, int]:
@@ -182,8 +194,8 @@ def _convex(corners: Array) -> bool:
     return bool(np.all(sine > _BENT) or np.all(sine < -_BENT))
 
 
-def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
-    """Cut a region into elements of about ``size_m`` along x and z.
+def cut(outline: Outline, *, size_m: tuple[float, float], order: int, graded: tuple[int, ...] = ()) -> Grid:
+    """Cut a region into elements of about ``size_m`` along x and z, with small ones in ``graded`` corners of a polygon.
 
     Raises
     ------
@@ -206,7 +218,7 @@ def cut(outline: Outline, *, size_m: tuple[float, float], order: int) -> Grid:
         radial = max(1, int(np.ceil((outer - inner) / size - _SLACK)))
         about = max(8, int(np.ceil(np.pi * (outer + inner) / size)))
         return weld(_ring(outer, inner, radial, about, order), order)
-    grid = weld(_polygon(np.array(outline.corners_m), size, order), order)
+    grid = weld(_polygon(np.array(outline.corners_m), size, order, graded), order)
     if abs(float(grid.quadrature().weight.sum()) - area(outline)) > 1e-6 * area(outline):
         raise BodyError(
             what="the polygon could not be divided into elements that fill it",

@@ -19,6 +19,11 @@ _TRIANGLE = 2.5
 # An element may be this share larger than asked before one more is laid.
 _SLACK = 0.25
 _TRIES = 8
+# Side of the smallest element in a graded corner, as a share of the one that is cut. At 120 degrees the error of a
+# pinned plate falls with this share.
+_GRADE = 0.1
+# Two points this near, as a share of the size, are one.
+_CLOSE = 1e-9
 
 
 def quadrilaterals(corners: Array, size_m: float) -> list[tuple[Array, int]]:
@@ -38,6 +43,30 @@ def quadrilaterals(corners: Array, size_m: float) -> list[tuple[Array, int]]:
         return [(quad, count) for quad in _split(corners)]
     points, triangles = triangulate(corners, _TRIANGLE * size_m)
     return [(quad, 1) for triangle in triangles for quad in _split(points[triangle])]
+
+
+def grade(quads: Array, corner: Array, size_m: float) -> Array:
+    """Lay a small element in the corner of every quadrilateral (e, 4, 2) that has one at ``corner`` (2,).
+
+    The two sides that meet there are cut at the same share on every quadrilateral, so that neighbours still fit.
+    """
+    at = np.linalg.norm(quads - corner, axis=2) < _CLOSE * size_m
+    touching = at.any(axis=1)
+    turn = (np.argmax(at[touching], axis=1)[:, None] + np.arange(4)) % 4
+    a, b, c, d = np.take_along_axis(quads[touching], turn[:, :, None], axis=1).transpose(1, 0, 2)
+    near_b, near_d = a + _GRADE * (b - a), a + _GRADE * (d - a)
+    near_c = near_b + near_d - a + _GRADE**2 * (a - b + c - d)
+    pieces = [(a, near_b, near_c, near_d), (near_b, b, c, near_c), (near_d, near_c, c, d)]
+    return np.concatenate([quads[~touching], *(np.stack(piece, axis=1) for piece in pieces)])
+
+
+def openings(corners: Array) -> Array:
+    """Interior angle (c,) at every corner of a polygon, rad."""
+    ahead = np.roll(corners, -1, axis=0) - corners
+    behind = np.roll(corners, 1, axis=0) - corners
+    angle = np.arctan2(ahead[:, 1], ahead[:, 0]) - np.arctan2(behind[:, 1], behind[:, 0])
+    swept = corners[:, 0] * np.roll(corners[:, 1], -1) - corners[:, 1] * np.roll(corners[:, 0], -1)
+    return np.asarray(np.mod(-angle if swept.sum() > 0.0 else angle, 2.0 * np.pi))
 
 
 def _split(triangle: Array) -> list[Array]:

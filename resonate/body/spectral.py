@@ -28,6 +28,8 @@ if TYPE_CHECKING:
 _WELD = 1e-9
 # How far a curved side may reach beyond its nodes, as a share of its element.
 _BULGE = 0.02
+# Points tried on each side of an element in the search for the nearest one.
+_RIM = 13
 # Values of nodal functions below this are round-off.
 ROUNDING = 1e-13
 
@@ -190,15 +192,45 @@ class Grid:
                 break
             element = column[rows]
             guess = self._invert(element, points_m[rows])
-            value, _ = basis(self.order, guess)
-            miss = np.linalg.norm(np.einsum("pk,pkd->pd", value, corners[element]) - points_m[rows], axis=1)
+            miss = self._miss(element, guess, points_m[rows])
+            outside_it = np.flatnonzero(miss > enough) if self.dimension > 1 else every[:0]
+            if len(outside_it):
+                guess[outside_it] = self._rim(element[outside_it], points_m[rows[outside_it]])
+                miss[outside_it] = self._miss(element[outside_it], guess[outside_it], points_m[rows[outside_it]])
             better = miss < left[rows]
             kept = rows[better]
             best[kept], local[kept], left[kept] = element[better], guess[better], miss[better]
         return best, local, left
 
+    def _miss(self, element: IntArray, local: Array, points_m: Array) -> Array:
+        value, _ = basis(self.order, local)
+        place = np.einsum("pk,pkd->pd", value, self.nodes_m[self.elements[element]])
+        return np.asarray(np.linalg.norm(place - points_m, axis=1))
+
+    def _rim(self, element: IntArray, points_m: Array) -> Array:
+        """Local coordinates (k, 2) of the point nearest to each point on the four sides of its element."""
+        # Every side of every element, refined apart: near a corner the nearest sample may lie on the wrong one.
+        side = np.tile(np.arange(4), len(element))
+        fixed, moving = side // 2, 1 - side // 2
+        corners = np.repeat(self.nodes_m[self.elements[element]], 4, axis=0)
+        wanted = np.repeat(points_m, 4, axis=0)
+        every, share = np.arange(len(side)), np.linspace(-1.0, 1.0, _RIM)
+        best = np.zeros((len(side), 2))
+        best[every, fixed] = 2.0 * (side % 2) - 1.0
+        reach = 1.0
+        while reach > _WELD:
+            tried = np.repeat(best[:, None], _RIM, axis=1)
+            tried[every, :, moving] = np.clip(tried[every, :, moving] + reach * share, -1.0, 1.0)
+            value, _ = basis(self.order, tried.reshape(-1, 2))
+            place = np.einsum("pqk,pkd->pqd", value.reshape(*tried.shape[:2], -1), corners)
+            far = np.linalg.norm(place - wanted[:, None], axis=2)
+            best = tried[every, np.argmin(far, axis=1)]
+            reach *= 2.0 / (_RIM - 1)
+        nearest = np.argmin(far.min(axis=1).reshape(-1, 4), axis=1)
+        return np.asarray(best.reshape(-1, 4, 2)[np.arange(len(element)), nearest])
+
     def _invert(self, element: IntArray, points_m: Array) -> Array:
-        # Newton in element coordinates; projected on the square, so that a point outside ends on the rim.
+        # Newton in element coordinates; kept on the square, so that a point outside ends somewhere on the rim.
         local = np.zeros_like(points_m)
         corners = self.nodes_m[self.elements[element]]
         for _ in range(12):

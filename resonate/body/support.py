@@ -9,6 +9,8 @@ import numpy as np
 from scipy.sparse import csr_matrix, diags, vstack
 
 from resonate.body.energy import eliminate
+from resonate.body.hang import hang, topples
+from resonate.errors import BodyError
 from resonate.scene.model import CordHold, FixHold, NamedHold, SpringHold
 
 if TYPE_CHECKING:
@@ -52,7 +54,7 @@ class Supports:
     """All supports of one body over its freedoms d.
 
     ``basis`` (d, f); ``springs`` and ``cords`` (d, d) stiffness or None; ``damper_rows`` (k, d) with
-    ``damper_ns_m`` (k,).
+    ``damper_ns_m`` (k,); ``warnings``: what a person should know.
     """
 
     basis: csr_matrix
@@ -60,10 +62,15 @@ class Supports:
     cords: csr_matrix | None
     damper_rows: csr_matrix
     damper_ns_m: Array
+    warnings: tuple[str, ...] = ()
 
 
 class Holdable(Protocol):
     """What a family of shapes must offer so that it can be held."""
+
+    @property
+    def name(self) -> str:
+        """The name given in the scene."""
 
     @property
     def freedoms(self) -> int:
@@ -74,6 +81,9 @@ class Holdable(Protocol):
 
     def motion(self, points_m: Array) -> csr_matrix:
         """Three displacements and three rotations (6 k, d) of material points (k, 3)."""
+
+    def turn(self, point_m: Array) -> csr_matrix:
+        """Rotation (3, d) of the matter nearest to a point (3,)."""
 
     def unused(self) -> NDArray[np.int64]:
         """Freedoms that this shape never moves."""
@@ -120,8 +130,56 @@ def _moving(rows: list[csr_matrix], damping: list[Array], width: int) -> tuple[c
     return stack[moves], np.concatenate([*damping, np.zeros(0)])[moves]
 
 
+def _cords(
+    body: Holdable, hung: list[tuple[CordHold, Held]], *, up: Array, weight_n: float, centre_m: Array, alone: bool
+) -> tuple[csr_matrix | None, tuple[str, ...]]:
+    """Stiffness of all cords, and that of gravity on what hangs from them ``alone``."""
+    if not hung:
+        return None, ()
+    points = np.concatenate([held.points_m for _, held in hung])
+    number = np.concatenate([held.places * held.share for _, held in hung])
+    length = np.concatenate([np.full(len(held.share), kind.length_m) for kind, held in hung])
+    stretch = np.concatenate(
+        [np.full(len(held.share), kind.stiffness_n_m or _TWINE_N / kind.length_m) for kind, held in hung]
+    )
+    arms = points - centre_m
+    hanging = hang(arms, number / number.sum(), up=up, weight_n=weight_n)
+    # Where something else holds the body as well, statics says nothing of the cords' part: they share evenly.
+    tension = hanging.tension_n if alone else weight_n * number / number.sum()
+    along = np.outer(up, up)
+    sway = tension / length
+    local = sway[:, None, None] * (np.eye(3) - along) + (number * stretch)[:, None, None] * along
+    motion = body.motion(points)
+    total = csr_matrix((body.freedoms, body.freedoms))
+    for point, stiffness in enumerate(local):
+        rows = motion[point * 6 + np.arange(3)]
+        total = total + rows.T @ csr_matrix(stiffness) @ rows
+    if not alone or weight_n == 0.0:
+        return total.tocsr(), ()
+    if topples(arms, hanging, local):
+        raise BodyError(
+            what="the body hangs from points below its mass centre and would fall over",
+            where=f"body {body.name!r}",
+            fix=f"fix the cords higher: the mass centre is at {np.round(centre_m, 6).tolist()} m in its own frame",
+        )
+    turn = body.turn(centre_m)
+    total = total + turn.T @ csr_matrix(hanging.turning) @ turn
+    if hanging.level:
+        return total.tocsr(), ()
+    return total.tocsr(), (
+        f"body {body.name!r}: the cords are not above the mass centre, so that it would not hang still as it is "
+        "placed; it is taken as if it did, every cord with the same share of the weight",
+    )
+
+
 def supports(
-    body: Holdable, holds: tuple[HoldSpec, ...], *, up: Array, weight_n: float, line: bool
+    body: Holdable,
+    holds: tuple[HoldSpec, ...],
+    *,
+    up: Array,
+    weight_n: float,
+    centre_m: Array,
+    line: bool,
 ) -> Supports:
     """Turn the supports of a scene into sparse forms.
 
@@ -133,15 +191,17 @@ def supports(
         (3,) unit vector against gravity, in the body frame; cords pull along it.
     weight_n : float
         Weight shared by the cords, N.
+    centre_m : Array
+        (3,) mass centre.
     line : bool
         Whether the shape is a line (its guided ends keep two transverse motions).
     """
     size = body.freedoms
     unused = body.unused()
     fixed = [csr_matrix((np.ones(len(unused)), (np.arange(len(unused)), unused)), shape=(len(unused), size))]
-    springs, cords, dampers, damping = [], [], [], []
+    springs, dampers, damping = [], [], []
+    hung: list[tuple[CordHold, Held]] = []
     places = [(hold, body.select(hold)) for hold in holds]
-    hung = sum(held.places for hold, held in places if isinstance(hold.hold, CordHold))
     for hold, held in places:
         motion = body.motion(held.points_m)
         count = len(held.points_m)
@@ -157,17 +217,15 @@ def supports(
                 dampers.append(rows)
                 damping.append(kind.damping_ns_m * share)
         else:
-            stretch = kind.stiffness_n_m if kind.stiffness_n_m is not None else _TWINE_N / kind.length_m
-            sway = weight_n / hung / kind.length_m
-            for point in range(count):
-                rows = motion[moves[point]]
-                local = sway * np.eye(3) + (stretch - sway) * np.outer(up, up)
-                cords.append(held.places * held.share[point] * (rows.T @ csr_matrix(local) @ rows))
+            hung.append((kind, held))
+    alone = len(hung) == len(holds)
+    cords, warnings = _cords(body, hung, up=up, weight_n=weight_n, centre_m=centre_m, alone=alone)
     damper_rows, damper_ns_m = _moving(dampers, damping, size)
     return Supports(
         basis=eliminate(_gather(fixed, size), size),
         springs=sum(springs[1:], springs[0]).tocsr() if springs else None,
-        cords=sum(cords[1:], cords[0]).tocsr() if cords else None,
+        cords=cords,
         damper_rows=damper_rows,
         damper_ns_m=damper_ns_m,
+        warnings=warnings,
     )

@@ -191,8 +191,11 @@ def _check(found: _Found, pencil: Pencil, *, free: bool, where: str) -> None:
             fix="an element resists rigid motion, or parts are not joined: look at the mesh and the strains",
         )
     doubtful = np.flatnonzero(~(found.residual <= RESIDUAL))
-    # Where the softest modes lie 1e13 below the stiffest, rounding in K alone does more than that.
-    unavoidable = rounding(pencil, found.vector[:, doubtful]) / found.value[doubtful]
+    # Where the softest modes lie 1e13 below the stiffest, rounding in K alone does more than that; what it does to the
+    # softest, such as swings, also leaks into the others.
+    leak = rounding(pencil, found.vector[:, :FREE_COUNT]) / np.sqrt(found.value[:FREE_COUNT])
+    own = rounding(pencil, found.vector[:, doubtful]) / found.value[doubtful]
+    unavoidable = np.maximum(own, np.max(leak, initial=0.0) / np.sqrt(found.value[doubtful]))
     allowed = np.clip(10.0 * unavoidable, RESIDUAL, RESIDUAL_MOST)
     for number, limit in zip(doubtful, allowed, strict=True):
         size = found.residual[number]

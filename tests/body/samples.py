@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+from functools import cache
+
 import numpy as np
 
 from resonate.body.build import build_body
+from resonate.body.spectral import basis
 from resonate.scene.read import parse_scene
 
 STEEL = "material = {density = 7850, young = 200e9, poisson = 0.3, loss = 1e-3}\n"
@@ -58,6 +61,7 @@ def read(text: str, *, head: str = ""):
     return parse_scene(scene).bodies[0]
 
 
+@cache
 def build(text: str, *, most: int = 20, **surroundings: float):
     """Build it, with a mesh for so many modes."""
     return build_body(read(f"{text}\nmodes = {{most = {most}}}\n"), **surroundings)
@@ -80,8 +84,6 @@ def rigid(body, *, centre_m=(0.0, 0.0, 0.0)) -> np.ndarray:
 
 def inside(body, generator: np.random.Generator, count: int) -> np.ndarray:
     """Random material points (count, 3) of a body, from shapes of its own elements."""
-    from resonate.body.spectral import basis
-
     grid = body.grid
     element = generator.integers(len(grid.elements), size=count)
     local = generator.uniform(-1.0, 1.0, size=(count, grid.dimension))
