@@ -50,6 +50,8 @@ _STRAINS = Strain.of(
 )
 _BENDS = Strain.of(FIELDS, 1, {(5, 0): 1.0}, {(4, 0): 1.0})
 _STATIONS = 65
+# A support this close to the middle, as a share of the width, is in the middle.
+_MIDDLE = 1e-3
 # Below this radius of gyration, as a share of the length, shear and rotary inertia act as if it were larger.
 _THIN = 5e-5
 _ROUND_STEPS = 16
@@ -250,7 +252,11 @@ class LineBody:
             whole = np.asarray(inside[self.grid.elements].all(axis=1), dtype=np.bool_)
             size = self.grid.measure(whole)[inside]
         else:
-            points, size = self._nearest(np.array(where.point_m)), np.ones(1)
+            points = self._nearest(np.array(where.point_m))
+            # In the middle of the section it stands for a post as wide as that, so that the bar does not roll on it.
+            width = float(self.layout.section_at(points[:1, 0]).width[0])
+            middle = abs(points[0, 2]) < _MIDDLE * width
+            return Held(points, np.ones(1), strip_m=width if middle else 0.0)
         if len(points) == 0:
             raise BodyError(
                 what="the box of a support holds no part of the body",

@@ -33,13 +33,23 @@ class Held:
 
     ``points_m`` (k, 3) material points; ``share`` (k,) how much of a spring each takes (sum 1);
     ``outward`` (k, 3) normals of the edge in its plane, or None off the edges; ``places``: how many ends, edges,
-    points or boxes they belong to, each with a cord of its own.
+    points or boxes they belong to, each with a cord of its own. ``strip_m``: springs are strips of this width along z
+    centred at the points.
     """
 
     points_m: Array
     share: Array
     outward: Array | None = None
     places: int = 1
+    strip_m: float = 0.0
+
+    def spread(self) -> tuple[Array, Array]:
+        """Points and shares of springs: two for a strip, which resist bounce and roll as the whole of it does."""
+        if self.strip_m == 0.0:
+            return self.points_m, self.share
+        # A strip of width w with stiffness k in all turns by k w^2/12: so do halves at w/sqrt(12) to either side.
+        aside = np.array([0.0, 0.0, self.strip_m / np.sqrt(12.0)])
+        return np.concatenate((self.points_m - aside, self.points_m + aside)), 0.5 * np.tile(self.share, 2)
 
     @classmethod
     def of(cls, points_m: Array, size: Array, *, outward: Array | None = None, places: int = 1) -> Held:
@@ -203,15 +213,13 @@ def supports(
     hung: list[tuple[CordHold, Held]] = []
     places = [(hold, body.select(hold)) for hold in holds]
     for hold, held in places:
-        motion = body.motion(held.points_m)
-        count = len(held.points_m)
-        moves = np.arange(count)[:, None] * 6 + np.arange(3)
         kind = hold.hold
         if isinstance(kind, NamedHold | FixHold):
-            fixed.extend(_fixed_rows(kind, held, motion, line=line))
+            fixed.extend(_fixed_rows(kind, held, body.motion(held.points_m), line=line))
         elif isinstance(kind, SpringHold):
-            rows = motion[moves.ravel()]
-            share = np.repeat(held.share, 3)
+            points, shares = held.spread()
+            rows = body.motion(points)[(np.arange(len(points))[:, None] * 6 + np.arange(3)).ravel()]
+            share = np.repeat(shares, 3)
             springs.append(rows.T @ diags(kind.stiffness_n_m * share) @ rows)
             if kind.damping_ns_m > 0.0:
                 dampers.append(rows)

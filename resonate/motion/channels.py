@@ -40,18 +40,18 @@ class BodyCurves:
     weights : Array
         (T, K) how much of each shown shape is present, between -1 and 1.
     mode_numbers : Indices
-        (K,) number of the mode in the listing of modes, from 1; 0 for a mechanism.
+        (K,) number of the mode in the listing of modes, from 1.
     labels : tuple[str, ...]
-        Names of the shapes: ``mode_3``, ``mechanism_1``.
+        Names of the shapes: ``mode_3``.
     kinds : tuple[Kind, ...]
         ``ring``: vibration, shown as ``ring`` below says. ``swing``: a hung body carried about as
-        a whole, and ``mechanism``: motion that no stiffness resists; both true and instantaneous.
+        a whole, true and instantaneous.
     ring : Literal["off", "true", "readable"]
         How the ring is shown: not at all, averaged over the shutter, or enlarged and slowed down.
     gain : float
         How many times the ring is enlarged.
     true_hz, shown_hz : Array
-        (K,) frequency of each shape and the frequency at which it is shown, Hz (0 for a mechanism).
+        (K,) frequency of each shape and the frequency at which it is shown, Hz.
     unresolved_m : Array
         (T,) root-mean-square displacement, true size, of all modes above half the frame rate,
         at the surface point where it is largest, m.

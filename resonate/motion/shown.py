@@ -15,6 +15,7 @@ from resonate.motion.visible import (
     fold,
     peak_displacement_m,
     peak_stretch,
+    reach,
     readable_gain,
     strongest,
     surface_shapes,
@@ -27,7 +28,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.body.body import Body
-    from resonate.motion.visible import Kind, SurfaceShapes
+    from resonate.motion.visible import Kind
     from resonate.run.track import BodyTrack
     from resonate.scene.model import ShowSpec
 
@@ -64,6 +65,7 @@ class Timeline:
 class Survey:
     """One body over the take, before anything is chosen.
 
+    ``shapes`` (n, 3, m) of the modes on the display mesh, ``reach`` (m,) how far each goes at the most, kg**-0.5;
     ``peak`` (m,) largest visible coordinate of each mode, m kg**0.5; ``swinging`` (m,) which modes carry
     the body about as a whole; ``unresolved_m`` (N,) size of the vibration that frames cannot follow, m.
     """
@@ -72,7 +74,8 @@ class Survey:
     body: Body
     show: ShowSpec
     line: Timeline
-    shapes: SurfaceShapes
+    shapes: Array
+    reach: Array
     peak: Array
     swinging: NDArray[np.bool_]
     unresolved_m: Array
@@ -91,10 +94,8 @@ class Shown:
 
     @property
     def labels(self) -> tuple[str, ...]:
-        """Names of the shapes: ``mode_3`` as numbered in the listing, ``mechanism_1`` counted here."""
-        loose = self.kinds.count("mechanism")
-        modes = [f"mode_{number}" for number in self.numbers if number]
-        return (*modes, *(f"mechanism_{number + 1}" for number in range(loose)))
+        """Names of the shapes: ``mode_3`` as numbered in the listing."""
+        return tuple(f"mode_{number}" for number in self.numbers)
 
 
 def survey(track: BodyTrack, body: Body, show: ShowSpec, line: Timeline) -> Survey:
@@ -115,7 +116,7 @@ def survey(track: BodyTrack, body: Body, show: ShowSpec, line: Timeline) -> Surv
     shapes = surface_shapes(body, modes)
     speed = damped(modes.omega, modes.decay.total)
     fast = np.flatnonzero(modes.frequency_hz > 0.5 * line.frame_rate_hz)
-    squares = np.sum(shapes.ring[:, :, fast] ** 2, axis=1)
+    squares = np.sum(shapes[:, :, fast] ** 2, axis=1)
     peak, unresolved = np.zeros(modes.count), np.zeros(len(line.scene_s))
     for block in line.blocks():
         times = line.scene_s[block]
@@ -131,9 +132,10 @@ def survey(track: BodyTrack, body: Body, show: ShowSpec, line: Timeline) -> Surv
         show=show,
         line=line,
         shapes=shapes,
+        reach=reach(shapes),
         peak=peak,
         swinging=swings(
-            shapes.ring, body.surface.points_m, modes.frequency_hz, frame_rate_hz=line.frame_rate_hz
+            shapes, body.surface.points_m, modes.frequency_hz, frame_rate_hz=line.frame_rate_hz
         ),
         unresolved_m=unresolved,
     )
@@ -155,7 +157,7 @@ def choose(found: Survey) -> Shown:
 def _ringing(found: Survey) -> Shown:
     track, show, line = found.track, found.show, found.line
     hertz = track.modes.frequency_hz
-    peak_m = np.where(found.swinging, 0.0, found.shapes.reach * found.peak)
+    peak_m = np.where(found.swinging, 0.0, found.reach * found.peak)
     chosen = strongest(peak_m, most=0 if show.ring == "off" else show.most)
     shown_hz = hertz[chosen]
     if show.ring == "readable" and len(chosen):
@@ -173,7 +175,7 @@ def _ringing(found: Survey) -> Shown:
     kinds: list[Kind] = ["ring"] * len(moving)
     return Shown(
         coordinates=coordinates[:, moving],
-        shapes=found.shapes.ring[:, :, chosen[moving]],
+        shapes=found.shapes[:, :, chosen[moving]],
         numbers=chosen[moving] + 1,
         kinds=tuple(kinds),
         true_hz=hertz[chosen[moving]],
@@ -182,26 +184,21 @@ def _ringing(found: Survey) -> Shown:
 
 
 def _carried(found: Survey) -> Shown:
-    """Swings of a hung body, and motions of a supported one that no stiffness resists."""
-    track, shapes, line = found.track, found.shapes, found.line
+    """Swings of a hung body."""
+    track, line = found.track, found.line
     modes, least_m = track.modes, _LEAST_MOTION * body_size_m(found.body.surface)
-    swing = np.flatnonzero(found.swinging & (shapes.reach * found.peak > least_m))
+    swing = np.flatnonzero(found.swinging & (found.reach * found.peak > least_m))
     q = np.zeros((len(line.scene_s), len(swing)))
     for block in line.blocks() if len(swing) else ():
         z = track.modal(line.scene_s[block])[swing]
         q[block] = displacement(z, modes.omega[swing], modes.decay.total[swing]).T
-    linear = np.zeros((0, len(line.scene_s)))
-    if shapes.mechanism.shape[2]:
-        linear = track.linear(line.scene_s)
-    loose = np.flatnonzero(shapes.mechanism_reach * np.max(np.abs(linear), axis=1, initial=0.0) > least_m)
-    hertz = np.concatenate([modes.frequency_hz[swing], np.zeros(len(loose))])
+    hertz = modes.frequency_hz[swing]
     swung: list[Kind] = ["swing"] * len(swing)
-    loosed: list[Kind] = ["mechanism"] * len(loose)
     return Shown(
-        coordinates=np.concatenate([q, linear[loose].T], axis=1),
-        shapes=np.concatenate([shapes.ring[:, :, swing], shapes.mechanism[:, :, loose]], axis=2),
-        numbers=np.concatenate([swing + 1, np.zeros(len(loose), dtype=np.int64)]),
-        kinds=(*swung, *loosed),
+        coordinates=q,
+        shapes=found.shapes[:, :, swing],
+        numbers=swing + 1,
+        kinds=tuple(swung),
         true_hz=hertz,
         shown_hz=hertz,
     )

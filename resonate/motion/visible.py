@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
@@ -18,7 +17,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
     Indices = NDArray[np.int64]
 
-Kind = Literal["ring", "swing", "mechanism"]
+Kind = Literal["ring", "swing"]
 
 # Folded frequencies lie between these fractions of the frame rate: 20 to 5 frames a cycle.
 SLOWEST_FOLD = 0.05
@@ -35,53 +34,28 @@ _SWING_SHARE = 0.98
 _LEAST_SHARE = 1e-6
 
 
-@dataclass(frozen=True, slots=True)
-class SurfaceShapes:
-    """Mode shapes on the display mesh.
-
-    ``ring`` (n, 3, m) elastic and ``mechanism`` (n, 3, r) stiffness-free shapes, kg**-0.5, at the
-    mesh points; ``reach`` (m,) and ``mechanism_reach`` (r,) the longest displacement vector of each.
-    """
-
-    ring: Array
-    mechanism: Array
-
-    @property
-    def reach(self) -> Array:
-        """Longest displacement vector of each elastic shape (m,), kg**-0.5."""
-        return _reach(self.ring)
-
-    @property
-    def mechanism_reach(self) -> Array:
-        """Longest displacement vector of each stiffness-free shape (r,), kg**-0.5."""
-        return _reach(self.mechanism)
-
-
-def _reach(shapes: Array) -> Array:
+def reach(shapes: Array) -> Array:
+    """Longest displacement vector (m,) of each shape (n, 3, m)."""
     return np.asarray(np.sqrt(np.max(np.sum(shapes**2, axis=1), axis=0)))
 
 
-def surface_shapes(body: Body, modes: ModeSet) -> SurfaceShapes:
-    """Elastic and stiffness-free shapes at the points of the display mesh.
+def surface_shapes(body: Body, modes: ModeSet) -> Array:
+    """Shapes of the modes at the points of the display mesh.
 
     Parameters
     ----------
     body : Body
         Gives the mesh and the displacement of its points.
     modes : ModeSet
-        Its modes. The rigid motions of a free body are left out: its pose carries them.
+        Its modes. Motions without stiffness are left out: the pose carries them.
 
     Returns
     -------
-    SurfaceShapes
-        Shapes (n, 3, m) and (n, 3, r) in the body frame.
+    Array
+        (n, 3, m) in the body frame, kg**-0.5.
     """
     points = body.surface.points_m
-    probe = body.probe(points)
-    ring = np.asarray(probe @ modes.shape).reshape(len(points), 3, modes.count)
-    rigid = modes.rigid[:, :0] if body.free else modes.rigid
-    mechanism = np.asarray(probe @ rigid).reshape(len(points), 3, rigid.shape[1])
-    return SurfaceShapes(ring=ring, mechanism=mechanism)
+    return np.asarray(body.probe(points) @ modes.shape).reshape(len(points), 3, modes.count)
 
 
 def body_size_m(surface: Surface) -> float:
@@ -197,7 +171,7 @@ def peak_displacement_m(shapes: Array, weights: Array, *, most_evaluations: int 
         The displacement, in the unit of shape times coordinate.
     """
     return _largest(
-        np.abs(weights) @ _reach(shapes), lambda t: _reach(shapes @ weights[t][:, None])[0], most_evaluations
+        np.abs(weights) @ reach(shapes), lambda t: reach(shapes @ weights[t][:, None])[0], most_evaluations
     )
 
 

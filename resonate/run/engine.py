@@ -11,18 +11,23 @@ from resonate.errors import Fault, RunError
 from resonate.run.blow import make_blows
 from resonate.run.course import Course, follow
 from resonate.run.flight import fly, matrix
-from resonate.run.limits import beyond_kept, beyond_linear
+from resonate.run.limits import beyond_kept, beyond_linear, beyond_rest
 from resonate.run.record import Event, Ledger, Record, RigidState
 from resonate.run.subject import Subject
 from resonate.run.track import BodyTrack
+from resonate.run.twist import twists_of
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
+
+    from numpy.typing import NDArray
 
     from resonate.body.body import Body
     from resonate.modes.modeset import ModeSet
     from resonate.modes.store import ModeStore
     from resonate.scene.model import BodySpec, Scene
+
+    Array = NDArray[np.float64]
 
 # A run whose energies do not add up to this share of what was put in is refused.
 CLOSES = 1e-6
@@ -64,11 +69,12 @@ def run(scene: Scene, bodies: Sequence[Body], modes: Sequence[ModeSet], *, store
             asked = [(n, strike) for n, strike in enumerate(scene.strikes) if strike.body_index == index]
             course = follow(subject, make_blows(asked, body, found, store=store), end_s=end_s)
             faults.extend(_open_ledger(body, course))
-            tracks.append(_track(subject, course))
+            tracks.append(_track(subject, course, twists_of(body, found)))
             events.extend(course.events)
             ledger = ledger.plus(course.ledger)
             warnings.extend(beyond_kept(found, course.ledger))
             warnings.extend(beyond_linear(tracks[-1], body, course.events))
+            warnings.extend(beyond_rest(tracks[-1], body, end_s=end_s))
         if faults:
             raise RunError(faults=tuple(faults))
         ordered = tuple(sorted(events, key=lambda event: (event.begin_s, event.strike)))
@@ -100,7 +106,7 @@ def _subject(spec: BodySpec, body: Body, modes: ModeSet, *, begin_s: float, grav
     return Subject(body.name, modes, body.inertia, place, turn, gravity, begin_s, begin)
 
 
-def _track(subject: Subject, course: Course) -> BodyTrack:
+def _track(subject: Subject, course: Course, twists: Array) -> BodyTrack:
     return BodyTrack(
         name=subject.name,
         modes=subject.modes,
@@ -110,6 +116,7 @@ def _track(subject: Subject, course: Course) -> BodyTrack:
         place_m=subject.place_m,
         turn=subject.turn,
         gravity=subject.gravity,
+        twists=twists,
     )
 
 

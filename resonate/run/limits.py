@@ -18,6 +18,8 @@ if TYPE_CHECKING:
 SPIN = 0.02
 # Share of the energy of its strikes that may go where nothing is heard before it is said.
 UNHEARD = 0.01
+# A supported body may turn by so much, rad, and its centre move by this share of its size, and still be where it was.
+TURNS, STRAYS = 0.1, 0.1
 _LOOKS = 256
 _POINTS = 150
 
@@ -60,6 +62,23 @@ def beyond_kept(modes: ModeSet, ledger: Ledger) -> tuple[str, ...]:
     return (
         f"body {modes.body!r}: {100.0 * share:.0f} % of the energy of its strikes goes into modes above {top_hz:.0f} "
         "Hz, which it feels but nobody hears: raise modes.most to hear them",
+    )
+
+
+def beyond_rest(track: BodyTrack, body: Body, *, end_s: float) -> tuple[str, ...]:
+    """Warn when a supported body leaves the place where its supports are."""
+    if track.free or not track.moves:
+        return ()
+    times = np.append(track.begins_s, max(end_s, float(track.begins_s[-1])))
+    twist = np.abs(track.twists @ track.linear(times))
+    angle = float(np.linalg.norm(twist[3:], axis=0).max())
+    shift_m = float(np.linalg.norm(twist[:3], axis=0).max())
+    far_m = STRAYS * float(np.ptp(body.surface.points_m, axis=0).max())
+    if angle <= TURNS and shift_m <= far_m:
+        return ()
+    return (
+        f"body {track.name!r}: its supports let it turn by {np.degrees(angle):.3g} deg (its centre goes {shift_m:.3g} "
+        "m); this version has nothing to right or stop it, and contacts keep to where it was",
     )
 
 

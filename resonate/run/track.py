@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import TYPE_CHECKING
 
@@ -11,6 +11,7 @@ import numpy as np
 from resonate.run.flight import fly, kick_of, matrix, turned
 from resonate.run.kernels.march import replay
 from resonate.run.propagator import coefficients, exponents, from_state, to_state
+from resonate.run.twist import finite
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -83,6 +84,8 @@ class BodyTrack:
         (3,) of its origin and (4,) xyzw: the pose of a supported body.
     gravity : Array
         (3,) what acts on a free body, m/s^2.
+    twists : Array
+        (6, r) what the motions without stiffness of a supported body do to it as a whole; see `twist`.
     """
 
     name: str
@@ -93,6 +96,14 @@ class BodyTrack:
     place_m: Array
     turn: Array
     gravity: Array
+    twists: Array = field(default_factory=lambda: np.zeros((6, 0)))
+
+    @cached_property
+    def moves(self) -> bool:
+        """Whether its pose changes."""
+        if self.free or not self.twists.size:
+            return self.free
+        return any(np.any(segment.z[self.modes.count :]) for segment in self.segments)
 
     @cached_property
     def begins_s(self) -> Array:
@@ -157,21 +168,28 @@ class BodyTrack:
         """Place (t, 3) of the mass centre in the world and turn (t, 4) xyzw, continuous in sign."""
         times = np.asarray(times_s, dtype=np.float64)
         if not self.free:
-            centre = self.place_m + matrix(self.turn) @ self.inertia.centre_m
-            return np.tile(centre, (len(times), 1)), np.tile(self.turn, (len(times), 1))
+            to_world = matrix(self.turn)
+            centre = self.place_m + to_world @ self.inertia.centre_m
+            if not self.moves:
+                return np.tile(centre, (len(times), 1)), np.tile(self.turn, (len(times), 1))
+            shift, turn = finite((self.twists @ self.linear(times)).T, turn=self.turn, to_world=to_world)
+            return centre + shift, self._continuous(times, turn)
         place, turn = np.zeros((len(times), 3)), np.zeros((len(times), 4))
         places = self._places(times)
         for number in np.unique(places):
             at = np.flatnonzero(places == number)
             place[at], turn[at] = self._flown(self.segments[number], times[at])
-        # Continuous from the first time on, whatever order the times are asked in.
+        return place, self._continuous(times, turn)
+
+    def _continuous(self, times: Array, turn: Array) -> Array:
+        """Turns (t, 4) with signs continuous from the first time on, whatever order the times are asked in."""
         order = np.argsort(times, kind="stable")
         sorted_turn = turn[order]
         if len(order):
             lead = 1.0 if float(sorted_turn[0] @ self.turn) >= 0.0 else -1.0
             flips = np.sum(sorted_turn[1:] * sorted_turn[:-1], axis=1) < 0.0
             turn[order] = sorted_turn * (lead * np.cumprod(np.where(np.append(False, flips), -1.0, 1.0)))[:, None]
-        return place, turn
+        return turn
 
     def _flown(self, segment: Segment, times_s: Array) -> tuple[Array, Array]:
         rigid = segment.rigid

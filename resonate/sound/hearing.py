@@ -107,7 +107,7 @@ def _hearing(track: BodyTrack, transfer: Transfer, *, mic_m: Array, shift_s: flo
     def weigh(away_m: Array) -> ComplexArray:
         return transfer.weights(away_m + centre_m, float(np.linalg.norm(away_m)))
 
-    if not track.free:
+    if not track.moves:
         seen = at_rest(track, mic_m)
     else:
         # Nothing is known, and nothing sounds, before the run.

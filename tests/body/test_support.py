@@ -187,6 +187,22 @@ def test_a_bar_bounces_and_tilts_on_end_springs():
     assert omega[6] > 1e3 * omega[5]
 
 
+def test_a_bar_on_two_posts_does_not_roll_off():
+    # A strip of width w and stiffness k turns by k w^2/12 (its own integral); the bar's roll is about its axis.
+    k, mass = 5e2, DENSITY * 0.1 * 0.04 * 0.03
+    posts = [(f"{{point = [{x}, 0, 0]}}", f"{{spring = {k}}}") for x in (0.02, 0.08)]
+    body = build(BLOCK + held(*posts), most=4)
+
+    omega, _ = lowest(body, 7)
+
+    roll = 2 * k * 0.04**2 / 12 / (mass * (0.04**2 + 0.03**2) / 12)
+    pitch, yaw = mass * (0.1**2 + 0.03**2) / 12, mass * (0.1**2 + 0.04**2) / 12
+    tilt = [2 * k * 0.03**2 / pitch, 2 * k * (0.03**2 + 0.04**2 / 12) / yaw]
+    expected = np.sqrt(np.sort([2 * k / mass] * 3 + tilt + [roll]))
+    assert_allclose(omega[:6], expected, rtol=1e-5)
+    assert omega[6] > 1e3 * omega[5]
+
+
 def test_a_plate_on_four_feet():
     # Springs of 200 N/m each way under points at (+-p, +-q), below its middle by half its thickness.
     k, p, q, thick = 200.0, 0.08, 0.05, 0.01

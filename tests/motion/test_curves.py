@@ -164,30 +164,21 @@ def test_force_peak_belongs_to_the_frame_in_which_it_acts(kit, track, bar):
     assert force[frame] == pytest.approx(np.max(kit.half_sine(300.0, 20)))
 
 
-def test_a_hung_body_swings_as_it_is_and_a_mechanism_is_not_lost(kit, bar):
-    # Mode 1 carries the bar about at 0.7 Hz; mode 2 rings. One motion without stiffness drifts.
+def test_a_hung_body_swings_as_it_is(kit, bar):
+    # Mode 1 carries the bar about at 0.7 Hz; mode 2 rings.
     shape = np.column_stack([np.full(bar.stations, 2.0), np.sin(np.pi * bar.x / 0.3)])
-    modes = kit.modes([0.7, 300.0], [0.05, 3.0], shape=shape, rigid=np.ones((bar.stations, 1)))
-    track = kit.Track(
-        modes, [(0.1, 1e-4, np.full(10, 50.0), shape[20])], linear_m=lambda t: 0.02 * np.maximum(t - 0.1, 0.0)
-    )
+    modes = kit.modes([0.7, 300.0], [0.05, 3.0], shape=shape)
+    track = kit.Track(modes, [(0.1, 1e-4, np.full(10, 50.0), shape[20])])
     scene = kit.scene()
     body = curves(kit.record(track), [bar], scene).bodies[0]
-    assert body.kinds == ("ring", "swing", "mechanism")
-    assert body.labels == ("mode_2", "mode_1", "mechanism_1")
-    np.testing.assert_array_equal(body.mode_numbers, [2, 1, 0])
+    assert body.kinds == ("ring", "swing")
+    assert body.labels == ("mode_2", "mode_1")
+    np.testing.assert_array_equal(body.mode_numbers, [2, 1])
     np.testing.assert_array_equal(body.gains[1:], 1.0)
     assert body.gain > 1.0
     times = np.array([float(scene.clock.frame_time(k)) for k in range(48)])
     swing = displacement(track.modal(times), modes.omega, modes.decay.total)[0] * 2.0
     np.testing.assert_allclose(np.abs(body.amplitude_m[:, 1]), np.abs(swing), rtol=1e-9, atol=1e-15)
-    np.testing.assert_allclose(
-        moved(body, body.weights[30])[:, 1][::4]
-        - swing[30]
-        - body.amplitude_m[30, 0] * np.sin(np.pi * bar.x / 0.3) * np.sign(body.targets[0][80, 1]),
-        0.02 * (times[30] - 0.1),
-        rtol=1e-9,
-    )
 
 
 def test_poses_are_instantaneous_and_in_one_hemisphere(kit, bar):

@@ -45,6 +45,11 @@ class Track:
     name: str = "bell rope"
     inertia: object = field(default_factory=lambda: SimpleNamespace(centre_m=np.zeros(3)))
 
+    @property
+    def moves(self):
+        """Only a free body does here."""
+        return self.free
+
     def pose(self, times_s):
         times_s = np.asarray(times_s, dtype=float)
         if self.motion is not None:

@@ -50,7 +50,7 @@ def body(begin_s):
         return np.zeros((count, 3)), np.tile([0.0, 0.0, 0.0, 1.0], (count, 1))
 
     inertia = SimpleNamespace(centre_m=np.zeros(3))
-    return SimpleNamespace(name="mug", modes=modes, segments=segments, pose=pose, free=False, inertia=inertia)
+    return SimpleNamespace(name="mug", modes=modes, segments=segments, pose=pose, free=False, moves=False, inertia=inertia)
 
 
 def acceleration(track, times_s):
