@@ -23,7 +23,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 # Raise when elements, energies or damping forms change, so that stored modes are made anew.
-VERSION = 6
+VERSION = 7
 
 
 def _up(spec: BodySpec) -> Array:

@@ -70,6 +70,37 @@ def thermoelastic_loss(heat: Sequence[HeatForm], shape: Array, omega: Array) -> 
     return eta
 
 
+# Decay as a share of omega at which a mode still swings; and from which a damper's pull on other modes matters.
+MOST = 0.999
+STRONG = 0.2
+# Below this a mode is motion rather than sound, Hz.
+_SLOW_HZ = 20.0
+
+
+def within_critical(decay: Decay, omega: Array) -> tuple[Decay, tuple[str, ...]]:
+    """Hold every mode just below critical damping, and say which were not or came near.
+
+    A body on foam creeps back where a critically damped one returns: neither can be heard.
+    """
+    notes: list[str] = []
+    hertz, total = omega / (2.0 * np.pi), decay.total
+    over = np.flatnonzero(total > MOST * omega)
+    if len(over):
+        band = dict.fromkeys((f"{hertz[over[0]]:.4g}", f"{hertz[over[-1]]:.4g}"))
+        what = "a mode is" if len(over) == 1 else f"{len(over)} modes are"
+        notes.append(f"{what} damped beyond critical ({' to '.join(band)} Hz): taken as critically damped")
+        share = np.where(total > MOST * omega, MOST * omega / np.where(total > 0.0, total, 1.0), 1.0)
+        parts = (decay.material, decay.thermoelastic, decay.support, decay.radiation)
+        decay = Decay(*(part * share for part in parts))
+    strong = np.flatnonzero((decay.support > STRONG * omega) & (hertz > _SLOW_HZ) & (total <= MOST * omega))
+    if len(strong):
+        notes.append(
+            f"its dampers are so strong ({decay.support[strong[0]] / omega[strong[0]]:.2g} of critical at "
+            f"{hertz[strong[0]]:.4g} Hz) that they would couple modes, which is left out: weaken them, or hold the place"
+        )
+    return decay, tuple(notes)
+
+
 def decays(forms: Forms, loss: Sequence[tuple[float, float]], shape: Array, omega: Array) -> Decay:
     """Decay rates by cause, to first order in the losses.
 

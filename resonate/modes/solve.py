@@ -9,7 +9,7 @@ import numpy as np
 from threadpoolctl import threadpool_limits
 
 from resonate.errors import ModesError
-from resonate.modes.decay import decays, energy_share
+from resonate.modes.decay import decays, energy_share, within_critical
 from resonate.modes.modeset import ModeSet
 from resonate.modes.pencil import Pencil, check_pencil, split
 from resonate.modes.rigid import FREE_COUNT, rounding
@@ -126,6 +126,8 @@ def _solve(body: Body) -> ModeSet:
     last_hz = float(omega[-1] / (2.0 * np.pi)) if keep else 0.0
     beyond = float(found.value[keep]) if keep < len(found.value) else found.beyond
     notes = _warnings(body, omega[swing:], whole=whole, asked=asked, next_hz=np.sqrt(beyond) / (2.0 * np.pi))
+    decay, strong = within_critical(decays(forms, body.loss, vector, omega), omega)
+    notes = (*notes, *strong)
     if not found.proved:
         notes = (*notes, "counting pivots could not confirm that no mode is missing")
     return ModeSet(
@@ -135,7 +137,7 @@ def _solve(body: Body) -> ModeSet:
         shape=np.asarray(forms.basis @ vector),
         # A held body rings but does not move as a whole.
         rigid=np.asarray(forms.basis @ _signed(found.rigid[:, :0] if body.held else found.rigid)),
-        decay=decays(forms, body.loss, vector, omega),
+        decay=decay,
         residual=found.residual[:keep],
         heard=int(np.searchsorted(omega, 2.0 * np.pi * body.bands.heard_hz, side="right")),
         heard_hz=body.bands.heard_hz,

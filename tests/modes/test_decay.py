@@ -177,10 +177,24 @@ def test_cords_have_no_material_loss(make):
     )
 
 
-def test_heavy_damping_is_kept_as_it_is(make):
+def test_beyond_critical_a_mode_is_taken_as_critically_damped_and_told(make):
+    # Critical: c = 2 sqrt(k m), a = omega (Den Hartog, Mechanical Vibrations, 1956, ch. 2).
     body = resonator(make, 10.0, damper_rows=sp.csr_matrix([[1.0]]), damper_ns_m=np.array([1e4]))
 
     modes = solve_modes(body)
 
-    assert modes.decay.support[0] == pytest.approx(5e3)
-    assert modes.decay.support[0] > modes.omega[0]
+    assert modes.decay.support[0] == pytest.approx(0.999 * TWO_PI * 10.0)
+    assert modes.decay.total[0] < modes.omega[0]
+    assert any("a mode is damped beyond critical (10 Hz)" in note for note in modes.warnings)
+
+
+@pytest.mark.parametrize(("share", "said"), [(0.15, False), (0.3, True)])
+def test_a_damper_so_strong_that_modes_would_couple_is_told(make, share, said):
+    body = resonator(
+        make, 100.0, damper_rows=sp.csr_matrix([[1.0]]), damper_ns_m=np.array([2.0 * share * TWO_PI * 100.0])
+    )
+
+    modes = solve_modes(body)
+
+    assert modes.decay.support[0] == pytest.approx(share * modes.omega[0])
+    assert any("would couple modes" in note for note in modes.warnings) is said
