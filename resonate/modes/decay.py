@@ -96,7 +96,7 @@ def within_critical(decay: Decay, omega: Array) -> tuple[Decay, tuple[str, ...]]
     if len(strong):
         notes.append(
             f"its dampers are so strong ({decay.support[strong[0]] / omega[strong[0]]:.2g} of critical at "
-            f"{hertz[strong[0]]:.4g} Hz) that they would couple modes, which is left out: weaken them, or hold the place"
+            f"{hertz[strong[0]]:.4g} Hz) that they would couple modes, which is left out: weaken them, or fix it there"
         )
     return decay, tuple(notes)
 
