@@ -129,6 +129,7 @@ def _renamed(modes: ModeSet, name: str) -> ModeSet:
 def _write_files(
     place: Building, scene: Scene, ran: Ran, *, store: ModeStore | None, progress: Progress
 ) -> None:
+    from resonate.field.doubts import told
     from resonate.motion.curves import curves as trace
     from resonate.take.deliver import write_sound
     from resonate.take.glb import write_glb
@@ -142,7 +143,7 @@ def _write_files(
     if "wav" in path:
         progress("sound")
         transfers = transfers_of(scene, ran)
-        warnings.extend(note for transfer in transfers for note in transfer.warnings)
+        warnings.extend(told([doubt for transfer in transfers for doubt in transfer.doubts]))
         heard = write_sound(path["wav"], scene, record, transfers)
     motion = None
     if "curves" in path or "glb" in path:
