@@ -15,11 +15,12 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from resonate import __version__
-from resonate.errors import BodyError, Fault, ModesError, ResonateError, RunError
+from resonate.errors import ResonateError
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterable, Iterator
 
+    from resonate.body.body import Body
     from resonate.modes.modeset import ModeSet
 
 _OUR_DEFECT = 3
@@ -108,7 +109,7 @@ def take(scene: Path, out: Path, *, replace: bool) -> None:
     from resonate.take.make import make_take
 
     wanted = read_scene(scene)
-    with _telling() as tell, _naming(scene):
+    with _telling() as tell:
         path = make_take(wanted, out=out, replace=replace, store=default_store(), progress=tell)
     click.echo(str(path))
     for line in _summary(path):
@@ -138,31 +139,26 @@ def _summary(path: Path) -> Iterable[str]:
 )
 def modes(scene: Path, *, as_json: bool, most: int | None) -> None:
     """List the modes of every body of SCENE: frequency, decay, and what damps each."""
-    from resonate.body.build import build_body
-    from resonate.modes.solve import solve_modes
     from resonate.modes.store import default_store
     from resonate.scene.read import read_scene
+    from resonate.take.make import solve_bodies
+    from resonate.take.survey import placing, survey
 
     wanted = read_scene(scene)
-    store = default_store()
-    found: list[tuple[float, ModeSet]] = []
-    with _telling() as tell, _naming(scene):
-        for spec in wanted.bodies:
-            tell(f"modes of {spec.name}")
-            world = wanted.world
-            body = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)
-            solved = solve_modes(body, store=store)
-            for note in solved.warnings:
-                tell(f"warning: {note}")
-            found.append((body.inertia.mass_kg, solved))
+    with _telling() as tell, placing(wanted):
+        bodies = survey(wanted)
+        found = solve_bodies(bodies, store=default_store(), progress=tell)
+        for note in dict.fromkeys(note for solved in found for note in solved.warnings):
+            tell(f"{_WARNING}{note}")
     if as_json:
-        click.echo(json.dumps({"bodies": [_listed(mass, solved, most=most) for mass, solved in found]}, indent=2))
+        listed = [_listed(body, solved, most=most) for body, solved in zip(bodies, found, strict=True)]
+        click.echo(json.dumps({"bodies": listed}, indent=2))
         return
-    for mass, solved in found:
-        _print_modes(mass, solved, most=most or _ROWS)
+    for body, solved in zip(bodies, found, strict=True):
+        _print_modes(body, solved, most=most or _ROWS)
 
 
-def _listed(mass_kg: float, solved: ModeSet, *, most: int | None) -> dict[str, Any]:
+def _listed(body: Body, solved: ModeSet, *, most: int | None) -> dict[str, Any]:
     decay, t60 = solved.decay, solved.t60_s
     rows = []
     # Slow swinging on springs and cords is motion as a whole, not a mode.
@@ -176,15 +172,17 @@ def _listed(mass_kg: float, solved: ModeSet, *, most: int | None) -> dict[str, A
                 "damping": {cause: float(getattr(decay, cause)[index]) for cause in causes},
             }
         )
-    return {"name": solved.body, "mass_kg": mass_kg, "modes": rows}
+    return {"name": solved.body, "mass_kg": body.inertia.mass_kg, "modes": rows}
 
 
-def _print_modes(mass_kg: float, solved: ModeSet, *, most: int) -> None:
+def _print_modes(body: Body, solved: ModeSet, *, most: int) -> None:
     from rich.table import Table
 
-    facts = _listed(mass_kg, solved, most=most)
-    count, heard = solved.count - solved.swing, solved.heard - solved.swing
-    title = f"{facts['name']}: {mass_kg:.4g} kg, {count} modes ({heard} heard), {solved.rigid.shape[1]} rigid motions"
+    facts = _listed(body, solved, most=most)
+    count, heard, rigid = solved.count - solved.swing, solved.heard - solved.swing, solved.rigid.shape[1]
+    title = f"{facts['name']}: {facts['mass_kg']:.4g} kg, {_many(count, 'mode')} ({heard} heard)"
+    title += f", {_many(rigid, 'rigid motion')}" if rigid else ""
+    title += f", {_many(solved.swing, 'swing')} on cords" if solved.swing else ""
     table = Table("mode", "Hz", "T60 s", "material", "thermoelastic", "support", "radiation", title=title)
     for column in table.columns:
         column.justify = "right"
@@ -199,6 +197,10 @@ def _print_modes(mass_kg: float, solved: ModeSet, *, most: int) -> None:
     left = count - len(facts["modes"])
     if left:
         click.echo(f"and {left} more, up to {solved.frequency_hz[-1]:.0f} Hz: --most {count} or --json lists all")
+
+
+def _many(count: int, what: str) -> str:
+    return f"{count} {what}{'' if count == 1 else 's'}"
 
 
 def _print_table(table: Any) -> None:  # noqa: ANN401 (rich is imported late)
@@ -276,7 +278,7 @@ def play(what: Path, gain_db: float) -> None:
     """Audition a take, or a scene, which is run without writing. Starts quiet and limits peaks."""
     from resonate.take.play import play_path
 
-    with _telling() as tell, _naming(what):
+    with _telling() as tell:
         play_path(what, gain_db=gain_db, progress=tell)
 
 
@@ -290,16 +292,6 @@ def _telling() -> Iterator[Callable[[str], None]]:
 
     with Console(stderr=True).status("reading") as status:
         yield lambda words: _warn(words) if words.startswith(_WARNING) else status.update(words)
-
-
-@contextmanager
-def _naming(scene: Path) -> Iterator[None]:
-    """Add the scene's file to errors of its bodies and of its run, which do not know it."""
-    try:
-        yield
-    except (BodyError, ModesError, RunError) as error:
-        named = (Fault(what=fault.what, where=f"{scene}: {fault.where}", fix=fault.fix) for fault in error.faults)
-        raise type(error)(faults=tuple(named)) from error
 
 
 def _warn(words: str) -> None:

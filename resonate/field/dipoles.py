@@ -12,6 +12,7 @@ from resonate.field.samples import frozen, phasor
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from resonate.field.doubts import Doubt
     from resonate.field.samples import Samples
 
     Array = NDArray[np.float64]
@@ -30,7 +31,7 @@ class DipoleLine:
         (3, h, n) displacement along body x, y and z in each sounding mode, kg**-0.5.
     volume_m3 : Array
         (n, 3) displaced plus added volume of each slice, for motion along body x, y and z.
-    warnings : tuple[str, ...]
+    doubts : tuple[Doubt, ...]
         What the model leaves out.
 
     Notes
@@ -44,7 +45,7 @@ class DipoleLine:
     samples: Samples
     motion: Array
     volume_m3: Array
-    warnings: tuple[str, ...] = ()
+    doubts: tuple[Doubt, ...] = ()
 
     def __post_init__(self) -> None:
         """Copy and freeze."""

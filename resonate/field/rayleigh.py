@@ -12,6 +12,7 @@ from resonate.field.samples import frozen, phasor
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from resonate.field.doubts import Doubt
     from resonate.field.samples import Samples
 
     Array = NDArray[np.float64]
@@ -32,7 +33,7 @@ class BaffledFace:
         (n, 3) unit normals.
     area_m2 : Array
         (n,) area of each sample.
-    warnings : tuple[str, ...]
+    doubts : tuple[Doubt, ...]
         What the model leaves out.
 
     Notes
@@ -46,7 +47,7 @@ class BaffledFace:
     motion: Array
     normals: Array
     area_m2: Array
-    warnings: tuple[str, ...] = ()
+    doubts: tuple[Doubt, ...] = ()
 
     def __post_init__(self) -> None:
         """Copy and freeze."""

@@ -139,7 +139,7 @@ def samples_of(body: Body, modes: ModeSet, air: Air) -> Samples:
         wavenumber_1_m=modes.omega[_sounding(modes)] / air.speed_m_s,
         modes=modes.count,
         first=modes.swing,
-        near_m=_near_m(body),
+        near_m=near_m(body),
         air=air,
     )
 
@@ -155,9 +155,12 @@ def _sounding(modes: ModeSet) -> slice:
     return slice(modes.swing, max(modes.heard, modes.swing))
 
 
-def _near_m(body: Body) -> float:
-    # Faces: the side of the largest sample. Lines: the distance between slices, or the
-    # distance from the line to the surface where that is more.
+def near_m(body: Body) -> float:
+    """How close to a body's samples a microphone may come, m.
+
+    Faces: the side of the largest sample. Lines: the distance between slices, or the distance from
+    the line to the surface where that is more.
+    """
     radiator = body.radiator
     if radiator.kind == "baffled":
         return float(np.sqrt(np.max(radiator.weights[:, 0])))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import unicodedata
 from typing import TYPE_CHECKING, Annotated, ClassVar
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict
@@ -149,13 +150,22 @@ def _turn(value: object) -> tuple[float, ...]:
 def _name(value: object) -> str:
     if not isinstance(value, str) or not value.strip():
         raise RefusedError(f"{shown(value)} is not a name", "give a text that is not empty")
-    if not value.isprintable() or any(letter in value for letter in '/\\".,;:*?<>|{}'):
+    if not _plain(value.strip()):
         raise RefusedError(
-            f"{shown(value)} cannot name a column", "use letters, digits, spaces, - and _ only"
+            f"{shown(value)} cannot name a column",
+            "use letters, digits, spaces, - and _ only, and begin with a letter or a digit",
         )
     if len(value) > 80:  # noqa: PLR2004 (a column head)
         raise RefusedError(f"{shown(value)} is {len(value)} characters long", "use at most 80")
     return value.strip()
+
+
+def _plain(name: str) -> bool:
+    # Of any script; what begins otherwise a spreadsheet may take for a formula.
+    kinds = [unicodedata.category(letter)[0] for letter in name]
+    return kinds[0] in "LN" and all(
+        kind in "LNM" or letter in " -_" for kind, letter in zip(kinds, name, strict=True)
+    )
 
 
 Flag = Annotated[bool, BeforeValidator(_flag)]

@@ -5,9 +5,8 @@ from __future__ import annotations
 import dataclasses
 import hashlib
 import json
-import math
 from fractions import Fraction
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 from pydantic import BaseModel
 
@@ -19,18 +18,19 @@ if TYPE_CHECKING:
     from resonate.scene.kinds import Quaternion, Triple
 
 
-_DIAGONAL = math.sqrt(0.5)
+#: From the middle of a body to its default microphone, in the body frame: 1 m, mostly up, a little forward and along.
+FRONT: Final = (0.36, 0.8, 0.48)
 
 
 def default_microphone(body: BodySpec) -> MicSpec:
     """One omni, 1 m from the middle of the body.
 
-    In front of plates and membranes it stands along their +y; lines are heard from between +y and +z, because
-    a line that bends in one plane alone is not heard at all from straight across that plane.
+    It stands off every axis and plane of symmetry. Straight above the middle all modes with a node line through
+    it would be silent, and a plate with free edges next to silent; a line that bends in one plane alone is not
+    heard at all from straight across that plane.
     """
-    front = (0.0, _DIAGONAL, _DIAGONAL) if is_line(body.shape) else (0.0, 1.0, 0.0)
-    middle = _middle(body.shape)
-    x, y, z = rotated((middle[0] + front[0], middle[1] + front[1], middle[2] + front[2]), body.turn)
+    x, y, z = (middle + away for middle, away in zip(_middle(body.shape), FRONT, strict=True))
+    x, y, z = rotated((x, y, z), body.turn)
     place = body.place_m
     return MicSpec(name="front", place_m=(place[0] + x, place[1] + y, place[2] + z))
 

@@ -78,8 +78,10 @@ def write_starter(name: Path, *, origin: str | None = None) -> Path:
     Raises
     ------
     SceneError
-        If there is no such example, or the file exists or cannot be written.
+        If there is no such example, the name is none, or the file exists or cannot be written.
     """
+    if name.name in ("", ".."):
+        raise SceneError(what=f"{str(name)!r} names no file", where="NAME", fix="give the scene a name, such as quay")
     path = name if name.suffix == ".toml" else name.with_name(name.name + ".toml")
     text = _text(path.stem) if origin is None else _example(origin)
     try:

@@ -9,7 +9,7 @@ import numpy as np
 from resonate.errors import ResonateError
 from resonate.take.make import run_scene, transfers_of
 from resonate.take.readback import read_table
-from resonate.take.report import Finding, equal, within
+from resonate.take.report import Finding, equal, same_hash, within
 from resonate.take.sync import sync_by_correlation
 
 if TYPE_CHECKING:
@@ -23,7 +23,7 @@ if TYPE_CHECKING:
     Json = dict[str, Any]  # a JSON object holds any JSON value
 
 #: The sound may be off the run's own states by this much.
-SYNC_LIMIT_SAMPLES: Final = 1.0
+SYNC_LIMIT_SAMPLES: Final = 0.5
 _AGAIN: Final = "the file was changed or damaged; make the take again with --replace"
 
 
@@ -46,7 +46,7 @@ def again_findings(manifest_file: Path, manifest: Json, *, store: ModeStore | No
         digest = scene.digest
     except ResonateError as error:
         digest = f"refused: {error.faults[0].what}"
-    yield equal(
+    yield same_hash(
         "the scene means what it meant",
         digest,
         manifest["scene"]["digest"],

@@ -14,7 +14,7 @@ from resonate.take.again import again_findings
 from resonate.take.check_motion import curve_findings, event_findings, glb_findings
 from resonate.take.check_sound import sound_findings
 from resonate.take.readback import UnreadableError
-from resonate.take.report import Finding, Report, equal, within
+from resonate.take.report import Finding, Report, same_hash, within
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator
@@ -132,27 +132,31 @@ def _promises(manifest_file: Path, manifest: Json) -> Iterator[Finding]:
         yield _file_finding(manifest_file.with_name(entry["name"]), entry)
     scene = manifest["scene"]
     text_hash = hashlib.sha256(scene["text"].encode("utf-8")).hexdigest()
-    yield equal("hash of the scene", text_hash, scene["text_sha256"], where=where, fix=_MAKE_AGAIN)
+    yield same_hash("hash of the scene", text_hash, scene["text_sha256"], where=where, fix=_MAKE_AGAIN)
     yield _ledger_finding(manifest["ledger"]["joules"], where)
 
 
 def _file_finding(file: Path, entry: Json) -> Finding:
-    if not file.is_file():
-        measured = "missing"
-    elif file.stat().st_size != entry["bytes"]:
-        measured = f"{file.stat().st_size} bytes"
-    else:
+    promised = _described(entry["bytes"], entry["sha256"])
+    ok, measured = False, "missing"
+    if file.is_file():
         with file.open("rb") as stream:
-            measured = hashlib.file_digest(stream, "sha256").hexdigest()
-    ok = measured == entry["sha256"]
+            found = hashlib.file_digest(stream, "sha256").hexdigest()
+        size = file.stat().st_size
+        ok = size == entry["bytes"] and found == entry["sha256"]
+        measured = _described(size, found)
     return Finding(
         name="file as it was made",
-        measured=measured if not ok else "unchanged",
-        limit=f"{entry['bytes']} bytes, SHA-256 {entry['sha256']}" if not ok else "unchanged",
+        measured="unchanged" if ok else measured,
+        limit="unchanged" if ok else promised,
         ok=ok,
         where=file.name,
         fix="restore the file, or " + _MAKE_AGAIN,
     )
+
+
+def _described(size: int, sha256: str) -> str:
+    return f"{size} bytes, SHA-256 {sha256[:12]}..."
 
 
 def _ledger_finding(joules: Json, where: str) -> Finding:

@@ -7,9 +7,9 @@ from typing import TYPE_CHECKING, Any, Final
 import numpy as np
 
 from resonate.take.check_motion import Frames
-from resonate.take.readback import Table, WaveFacts, read_table, read_wave_chunks
+from resonate.take.check_sync import STEPS, contact_findings, run_findings
+from resonate.take.readback import WaveFacts, read_table, read_wave_chunks
 from resonate.take.report import Finding, equal, within
-from resonate.take.sync import onset_near
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -21,19 +21,11 @@ if TYPE_CHECKING:
     Json = dict[str, Any]  # a JSON object holds any JSON value
 
 _AGAIN: Final = "the file was changed or damaged; make the take again with --replace"
-_DEFECT: Final = "make the take again with --replace; if it stays, report it with the scene"
 _SUBTYPES: Final = {"16-bit": "PCM_16", "24-bit": "PCM_24", "float": "FLOAT"}
-# One step of the format as a share of full scale; single precision keeps 24 bits.
-_STEPS: Final = {"16-bit": 2.0**-15, "24-bit": 2.0**-23, "float": 2.0**-24}
-#: An onset may be this far from its contact: what a detector can tell, not what the file keeps.
-ONSET_LIMIT_S: Final = 2e-3
-# Hits closer than this are not told apart; longer contacts have no sharp onset.
-_APART_S: Final = 20e-3
-_SHARP_S: Final = 4e-3
 
 
 def sound_findings(file: Path, manifest: Json) -> Iterator[Finding]:
-    """Length, format, position, cues, peak and onsets."""
+    """Length, format, position, cues, levels, and where the sound stands in time."""
     import soundfile
 
     clock, promised, where = Frames.of(manifest), manifest["sound"], file.name
@@ -50,7 +42,8 @@ def sound_findings(file: Path, manifest: Json) -> Iterator[Finding]:
     if events_file.is_file():
         table = read_table(events_file)
         yield from _cue_findings(read_wave_chunks(file), table.numbers("begin_s"), clock, where)
-        yield _onset_finding(samples, table, manifest, where)
+        yield from contact_findings(samples, table, manifest, where)
+    yield from run_findings(samples, promised, clock.sample_rate, where)
 
 
 def _second_reader(file: Path, samples: Array) -> Finding:
@@ -93,7 +86,7 @@ def _place_findings(facts: WaveFacts, clock: Frames, manifest: Json, where: str)
 
 
 def _level_findings(samples: Array, promised: Json, where: str) -> Iterator[Finding]:
-    step = _STEPS[promised["format"]]
+    step = STEPS[promised["format"]]
     peak = float(np.max(np.abs(samples), initial=0.0))
     stated_db = promised["levels"]["peak_dbfs"]
     stated = 0.0 if stated_db is None else 10.0 ** (stated_db / 20.0)
@@ -140,30 +133,3 @@ def _cue_findings(facts: WaveFacts, begin_s: Array, clock: Frames, where: str) -
         yield within("cues against events", late, 0.5 + 1e-3, unit="samples", where=where, fix=_AGAIN)
     unnamed = sum(not label for _, label in facts.cues)
     yield equal("cues without a label", unnamed, 0, where=where, fix=_AGAIN)
-
-
-def _onset_finding(samples: Array, table: Table, manifest: Json, where: str) -> Finding:
-    begin_s, end_s, bodies = table.numbers("begin_s"), table.numbers("end_s"), table.columns["body"]
-    rate = manifest["clock"]["sample_rate_hz"]
-    late_s = manifest["sound"]["delay"]["late_s"]
-    misses = []
-    for number, begin in enumerate(begin_s):
-        others = np.delete(begin_s, number)
-        lonely = not np.any((others > begin - 3.0 * _APART_S) & (others < begin + 2.0 * _APART_S))
-        if not lonely or end_s[number] - begin > _SHARP_S:
-            continue
-        for channel, mic in enumerate(manifest["sound"]["channels"]):
-            expected = begin + late_s[bodies[number]][mic]
-            heard = onset_near(samples[:, channel], rate_hz=rate, expected_s=expected, reach_s=_APART_S)
-            if heard is not None:
-                misses.append(1e3 * (heard - expected))
-    worst = max(misses, key=abs, default=0.0)
-    return within(
-        "onsets of sharp, lonely hits",
-        worst,
-        1e3 * ONSET_LIMIT_S,
-        unit="ms",
-        where=where,
-        fix=_DEFECT,
-        note=f" at worst over {len(misses)}",
-    )

@@ -8,19 +8,24 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 
 from resonate.take.chunks import Cue, Heading, Loudness, Slate
+from resonate.take.excerpt import excerpts_of
 from resonate.take.manifest import Arrivals, Heard
 from resonate.take.quantise import room
-from resonate.take.tables import event_sample
+from resonate.take.tables import event_sample, file_time
 from resonate.take.wave import write_wave
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
     from pathlib import Path
 
+    from numpy.typing import NDArray
+
     from resonate.field.transfer import Transfer
     from resonate.run.record import Record
     from resonate.scene.model import LevelSpec, Scene
     from resonate.sound.levels import Levels
+
+    Array = NDArray[np.float64]
 
 # Keeps the dither apart from everything else that the seed of a scene may feed.
 _DITHER_STREAM: Final = 0x64697468
@@ -64,7 +69,24 @@ def write_sound(path: Path, scene: Scene, record: Record, transfers: Sequence[Tr
         heading=heading(scene, record, levels),
         rng=dither_source(scene) if _dithers(scene) else None,
     )
-    return Heard(levels, sound.channel_names, arrivals(scene, record))
+    late = arrivals(scene, record, transfers)
+    excerpts = excerpts_of(
+        sound.pressure_pa,
+        _moments_s(scene, record, late),
+        rate_hz=scene.clock.sample_rate,
+        channels=sound.channel_names,
+    )
+    return Heard(levels, sound.channel_names, late, excerpts)
+
+
+def _moments_s(scene: Scene, record: Record, late: Arrivals) -> Array:
+    # File time at which every contact reaches every microphone (contacts, microphones).
+    begins = [float(file_time(event.begin_s, scene.clock)) for event in record.events]
+    rows = [
+        [begin + late.late_s[event.body][mic.name] for mic in scene.mics]
+        for begin, event in zip(begins, record.events, strict=True)
+    ]
+    return np.array(rows, dtype=np.float64).reshape(len(rows), len(scene.mics))
 
 
 def _dithers(scene: Scene) -> bool:
@@ -116,21 +138,24 @@ def heading(scene: Scene, record: Record, levels: Levels) -> Heading:
     )
 
 
-def arrivals(scene: Scene, record: Record) -> Arrivals:
-    """How late every microphone hears every body, and the delay that was taken out of all."""
+def arrivals(scene: Scene, record: Record, transfers: Sequence[Transfer]) -> Arrivals:
+    """How late every microphone hears every body, how far its sound is spread, and the delay taken out of all."""
     from resonate.field.air import Air
     from resonate.sound.hearing import arrivals_s
 
     late = arrivals_s(record.bodies, scene)
     names = tuple(mic.name for mic in scene.mics)
     centre_m = record.bodies[0].pose(np.zeros(1))[0][0]
-    travel_s = (
-        float(np.linalg.norm(np.asarray(scene.mics[0].place_m) - centre_m)) / Air.of(scene.world).speed_m_s
-    )
+    speed_m_s = Air.of(scene.world).speed_m_s
+    travel_s = float(np.linalg.norm(np.asarray(scene.mics[0].place_m) - centre_m)) / speed_m_s
     return Arrivals(
         removed_s=0.0 if scene.sound.delay else travel_s - float(late[0, 0]),
         late_s={
             track.name: {name: float(value) for name, value in zip(names, row, strict=True)}
             for track, row in zip(record.bodies, late, strict=True)
+        },
+        reach_s={
+            track.name: float(transfer.radius_m) / speed_m_s
+            for track, transfer in zip(record.bodies, transfers, strict=True)
         },
     )

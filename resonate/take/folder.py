@@ -29,9 +29,9 @@ if TYPE_CHECKING:
 _MOST_NAME_BYTES: Final = 120
 _DIGEST_LENGTH: Final = 12
 _UNSAFE: Final = re.compile(r'[<>:"/\\|?*\x00-\x1f\x7f]')
-# Names that Windows keeps for devices, with any ending.
+# Names that Windows keeps for devices, up to the first dot, whatever follows it.
 _DEVICES: Final = re.compile(
-    r"(con|prn|aux|nul|conin\$|conout\$|com[0-9¹²³]|lpt[0-9¹²³])(\..*)?", re.IGNORECASE
+    r"(con|prn|aux|nul|conin\$|conout\$|com[0-9¹²³]|lpt[0-9¹²³])( *)(\..*)?", re.IGNORECASE
 )
 _FULL: Final = (errno.ENOSPC, errno.EDQUOT)
 
@@ -39,8 +39,8 @@ _FULL: Final = (errno.ENOSPC, errno.EDQUOT)
 def safe_name(title: str) -> str:
     """Make a title a file name on every system.
 
-    >>> safe_name("Galley: mug / 2"), safe_name("aux"), safe_name("...")
-    ('Galley_ mug _ 2', 'aux_take', 'take')
+    >>> safe_name("Galley: mug / 2"), safe_name("aux"), safe_name("nul.wav"), safe_name("...")
+    ('Galley_ mug _ 2', 'aux_take', 'nul_take.wav', 'take')
     """
     text = " ".join(unicodedata.normalize("NFC", title).split())
     text = "".join(c if c.isprintable() else " " for c in _UNSAFE.sub("_", text))
@@ -49,7 +49,8 @@ def safe_name(title: str) -> str:
         name = name[:-1].rstrip(". ")
     if not name:
         return "take"
-    return f"{name}_take" if _DEVICES.fullmatch(name) else name
+    device = _DEVICES.fullmatch(name)
+    return f"{device.group(1)}_take{device.group(3) or ''}" if device else name
 
 
 @dataclass(frozen=True, slots=True)

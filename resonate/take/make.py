@@ -66,11 +66,14 @@ def make_take(
     ResonateError
         Whatever a body, its modes or the run refuse.
     """
+    from resonate.take.survey import placing
+
     name = safe_name(scene.title)
     tell = progress or _say_nothing
     with building(Path(out), name, digest=scene.digest, replace=replace) as place:
         ran = run_scene(scene, store=store, progress=tell)
-        _write_files(place, scene, ran, store=store, progress=tell)
+        with placing(scene):
+            _write_files(place, scene, ran, store=store, progress=tell)
     return Path(out) / name
 
 
@@ -90,33 +93,29 @@ class Ran:
 def run_scene(scene: Scene, *, store: ModeStore | None = None, progress: Progress = _say_nothing) -> Ran:
     """Build the bodies, find their modes and run; nothing is rendered or written."""
     from resonate.run.engine import run
+    from resonate.take.survey import placing, survey
 
-    bodies, modes = _solve_bodies(scene, store=store, progress=progress)
-    progress("running")
-    return Ran(bodies, modes, run(scene, bodies, modes, store=store))
+    bodies = survey(scene)
+    with placing(scene):
+        modes = solve_bodies(bodies, store=store, progress=progress)
+        progress("running")
+        return Ran(bodies, modes, run(scene, bodies, modes, store=store))
 
 
-def _solve_bodies(
-    scene: Scene, *, store: ModeStore | None, progress: Progress
-) -> tuple[tuple[Body, ...], tuple[ModeSet, ...]]:
-    # Bodies that are alike are solved once.
-    from resonate.body.build import build_body
+def solve_bodies(bodies: Sequence[Body], *, store: ModeStore | None, progress: Progress) -> tuple[ModeSet, ...]:
+    """Find the modes of bodies in their order; those that are alike are solved once."""
     from resonate.modes.solve import solve_modes, solved_hz
     from resonate.modes.store import modes_key
 
-    bodies: list[Body] = []
     modes: list[ModeSet] = []
     known: dict[str, ModeSet] = {}
-    world = scene.world
-    for spec in scene.bodies:
-        progress(f"modes of {spec.name}")
-        body = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)
+    for body in bodies:
+        progress(f"modes of {body.name}")
         key = modes_key(body, solved_hz=solved_hz(body))
         if key not in known:
             known[key] = solve_modes(body, store=store)
-        bodies.append(body)
         modes.append(_renamed(known[key], body.name))
-    return tuple(bodies), tuple(modes)
+    return tuple(modes)
 
 
 def _renamed(modes: ModeSet, name: str) -> ModeSet:
@@ -129,6 +128,7 @@ def _renamed(modes: ModeSet, name: str) -> ModeSet:
 def _write_files(
     place: Building, scene: Scene, ran: Ran, *, store: ModeStore | None, progress: Progress
 ) -> None:
+    from resonate.field.doubts import told
     from resonate.motion.curves import curves as trace
     from resonate.take.deliver import write_sound
     from resonate.take.glb import write_glb
@@ -142,7 +142,7 @@ def _write_files(
     if "wav" in path:
         progress("sound")
         transfers = transfers_of(scene, ran)
-        warnings.extend(note for transfer in transfers for note in transfer.warnings)
+        warnings.extend(told([doubt for transfer in transfers for doubt in transfer.doubts]))
         heard = write_sound(path["wav"], scene, record, transfers)
     motion = None
     if "curves" in path or "glb" in path:

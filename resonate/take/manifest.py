@@ -27,6 +27,7 @@ if TYPE_CHECKING:
     from resonate.scene.clock import Clock
     from resonate.scene.model import Scene
     from resonate.sound.levels import Levels
+    from resonate.take.excerpt import Excerpt
 
     Json = dict[str, Any]  # a JSON object holds any JSON value
 
@@ -44,20 +45,23 @@ class Arrivals:
     """When the microphones hear the bodies.
 
     ``removed_s`` the delay that was taken out of every channel; ``late_s`` by body and microphone,
-    how much later than the motion the sound still comes.
+    how much later than the motion the sound of its mass centre still comes; ``reach_s`` by body, how much
+    earlier or later its ends may be heard.
     """
 
     removed_s: float
     late_s: dict[str, dict[str, float]]
+    reach_s: dict[str, float]
 
 
 @dataclass(frozen=True, slots=True)
 class Heard:
-    """The sound as delivered: ``levels``, ``channels`` in order, ``arrivals``."""
+    """The sound as delivered: ``levels``, ``channels`` in order, ``arrivals``, ``excerpts`` of the run's pressure."""
 
     levels: Levels
     channels: tuple[str, ...]
     arrivals: Arrivals
+    excerpts: tuple[Excerpt, ...]
 
 
 def write_manifest(
@@ -167,7 +171,9 @@ def _sound_facts(heard: Heard, scene: Scene) -> Json:
             "kept": sound.delay,
             "removed_s": heard.arrivals.removed_s,
             "late_s": heard.arrivals.late_s,
+            "reach_s": heard.arrivals.reach_s,
         },
+        "excerpts": [asdict(excerpt) for excerpt in heard.excerpts],
     }
 
 

@@ -19,6 +19,8 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
+    from resonate.scene.model import Scene
+
     Array = NDArray[np.float64]
 
 #: Loudest sample that leaves for the device, dBFS, before ``gain_db``.
@@ -82,17 +84,15 @@ def _silent(error: Exception) -> TakeError:
     )
 
 
-def _samples(path: Path, progress: Callable[[str], None]) -> tuple[Array, int]:
-    if path.is_dir():
-        return _samples_of_take(path)
+def _samples_of_scene(scene: Scene, progress: Callable[[str], None]) -> tuple[Array, int]:
     from resonate.modes.store import default_store
-    from resonate.scene.read import read_scene
     from resonate.sound.render import render
     from resonate.take.make import run_scene, transfers_of
+    from resonate.take.survey import placing
 
-    scene = read_scene(path)
     ran = run_scene(scene, store=default_store(), progress=progress)
-    sound = render(ran.record, transfers_of(scene, ran), scene)
+    with placing(scene):
+        sound = render(ran.record, transfers_of(scene, ran), scene)
     return sound.pressure_pa, int(sound.rate_hz)
 
 
@@ -125,10 +125,22 @@ def play_path(path: Path, *, gain_db: float, progress: Callable[[str], None]) ->
     Raises
     ------
     TakeError
-        If there is no sound system, no device, or nothing to play.
+        If there is nothing to play, no sound system, or no device.
     """
-    device = _device()
-    samples, rate_hz = _samples(path, progress)
+    from resonate.scene.read import read_scene
+
+    if not path.exists():
+        raise TakeError(
+            what="there is no such take or scene", where=str(path), fix="name the folder of a take, or a scene file"
+        )
+    # What is cheap to find out comes first: a file that does not read, then a machine that cannot play.
+    if path.is_dir():
+        samples, rate_hz = _samples_of_take(path)
+        device = _device()
+    else:
+        scene = read_scene(path)
+        device = _device()
+        samples, rate_hz = _samples_of_scene(scene, progress)
     progress("playing")
     try:
         device.play(guarded(samples, rate_hz, gain_db=gain_db), rate_hz, blocking=True)

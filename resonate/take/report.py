@@ -3,32 +3,34 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Final
 
 from resonate.errors import CheckFault, Fault
 
 if TYPE_CHECKING:
     from pathlib import Path
 
+_SHOWN_DIGITS: Final = 12
+
 
 @dataclass(frozen=True, slots=True)
 class Finding:
     """One measurement.
 
-    ``name`` what was measured; ``measured`` and ``limit`` with their units; ``ok`` whether it holds;
-    ``where`` the file; ``fix`` what to do when it does not.
+    ``name`` what was measured; ``measured`` and ``limit`` with their units; ``ok`` whether it holds, None
+    where there was nothing to measure; ``where`` the file; ``fix`` what to do when it does not.
     """
 
     name: str
     measured: str
     limit: str
-    ok: bool
+    ok: bool | None
     where: str
     fix: str
 
     def __str__(self) -> str:
-        """One line: ok or FAULT, name, measured, limit, file."""
-        verdict = "ok   " if self.ok else "FAULT"
+        """One line: ok, FAULT or none (nothing to measure), name, measured, limit, file."""
+        verdict = {True: "ok   ", False: "FAULT", None: "none "}[self.ok]
         return f"{verdict} {self.name}: {self.measured} (limit: {self.limit}) [{self.where}]"
 
 
@@ -41,8 +43,8 @@ class Report:
 
     @property
     def ok(self) -> bool:
-        """Whether everything holds."""
-        return all(finding.ok for finding in self.findings)
+        """Whether everything that could be measured holds."""
+        return all(finding.ok is not False for finding in self.findings)
 
     @property
     def faults(self) -> tuple[Fault, ...]:
@@ -54,7 +56,7 @@ class Report:
                 fix=finding.fix,
             )
             for finding in self.findings
-            if not finding.ok
+            if finding.ok is False
         )
 
     def raise_faults(self) -> None:
@@ -102,8 +104,21 @@ def within(
     )
 
 
+def nothing(name: str, why: str, *, limit: str, where: str) -> Finding:
+    """Own up to a measurement that could not be made."""
+    return Finding(name=name, measured=why, limit=limit, ok=None, where=where, fix="")
+
+
 def equal(name: str, value: object, expected: object, *, where: str, fix: str) -> Finding:
     """Judge whether a value is the expected one."""
     return Finding(
         name=name, measured=str(value), limit=str(expected), ok=value == expected, where=where, fix=fix
+    )
+
+
+def same_hash(name: str, found: str, expected: str, *, where: str, fix: str) -> Finding:
+    """Judge whether two hashes are one; all digits count, the first twelve are shown."""
+    short = f"{found[:_SHOWN_DIGITS]}..." if len(found) == len(expected) else found
+    return Finding(
+        name=name, measured=short, limit=f"{expected[:_SHOWN_DIGITS]}...", ok=found == expected, where=where, fix=fix
     )

@@ -34,13 +34,12 @@ def modes_at(wavenumber_1_m, shape, *, heard=None, swing=0):
     )
 
 
-def body_of(kind, points, normals, weights, *, surface=None, free=False):
+def body_of(kind, points, normals, weights, *, surface=None):
     points = np.asarray(points, dtype=float)
     surface = points if surface is None else np.asarray(surface, dtype=float)
     none = np.zeros((0, 3), dtype=np.int64)
     return SimpleNamespace(
         name="hatch",
-        free=free,
         radiator=Radiator(kind, points, np.asarray(normals, dtype=float), np.asarray(weights, dtype=float)),
         surface=Surface(surface, np.zeros_like(surface), none),
         probe=lambda asked: eye_array(3 * len(asked), format="csr"),

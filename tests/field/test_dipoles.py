@@ -89,13 +89,3 @@ def test_a_microphone_inside_the_body_is_refused(air_model):
     with pytest.raises(BodyError, match=r"(?s)closer than 0\.025 m.*move the microphone"):
         transfer.weights(np.array([0.15, 0.01, 0.0]), 1.0)
     assert np.isfinite(transfer.weights(np.array([0.15, 0.05, 0.0]), 1.0)[0])
-
-
-def test_a_thick_line_is_warned_about(air_model):
-    points = np.array([[0.0, 0.0, 0.0], [0.1, 0.0, 0.0]])
-    skin = points + np.array([0.0, 0.02, 0.0])
-    volumes = np.full((2, 3), 1e-5)
-    thick = air_model.line(points, volumes, np.ones((2, 3)), 100.0, surface=skin)
-    thin = air_model.line(points, volumes, np.ones((2, 3)), 10.0, surface=skin)
-    assert "cross-section" in thick.warnings[0]
-    assert thin.warnings == ()

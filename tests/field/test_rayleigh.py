@@ -172,11 +172,3 @@ def test_a_microphone_on_the_face_is_refused(air_model):
     transfer = air_model.face(points, areas, np.ones(len(points)), 10.0)
     with pytest.raises(BodyError, match=r"(?s)hatch.*fix.*move the microphone"):
         transfer.weights(np.array([0.03, 0.001, 0.02]), 1.0)
-
-
-def test_a_free_plate_is_warned_about(air_model):
-    points, areas = air_model.disc(0.1, 20)
-    held = air_model.face(points, areas, np.ones(len(points)), 10.0)
-    free = air_model.face(points, areas, np.ones(len(points)), 10.0, free=True)
-    assert held.warnings == ()
-    assert "baffled" in free.warnings[0]

@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+import hashlib
+import json
 from pathlib import Path
 
 import pytest
+import soundfile
 
 from resonate.scene.bodies import NAMED_HOLDS
 from resonate.scene.model import CordHold, FixHold, NamedHold, SpringHold
 from resonate.scene.read import read_scene
 from resonate.scene.shapes import OUTLINES, SHAPES
+from resonate.take.check import check_take
 
 EXAMPLES = sorted((Path(__file__).resolve().parents[2] / "examples").glob("*.toml"))
 
@@ -49,3 +53,37 @@ def test_each_says_where_it_comes_from_and_what_it_shows():
         assert lines[0].startswith("# ")
         assert "Saltmarrow" in lines[0] or "Quillhaven" in lines[0]
         assert read_scene(path).strikes
+
+
+def late(take, samples):
+    """Move the sound of a take by so many samples and make the manifest's hash of it true again."""
+    sound, manifest = take / f"{take.name}.wav", take / f"{take.name}.json"
+    facts = soundfile.info(sound)
+    width = facts.channels * {"PCM_16": 2, "PCM_24": 3, "FLOAT": 4}[facts.subtype]
+    data = sound.read_bytes()
+    begin = data.index(b"data" + (facts.frames * width).to_bytes(4, "little")) + 8
+    end = begin + facts.frames * width
+    data = data[:begin] + bytes(samples * width) + data[begin : end - samples * width] + data[end:]
+    sound.write_bytes(data)
+    told = json.loads(manifest.read_text(encoding="utf-8"))
+    for entry in told["files"]:
+        if entry["name"] == sound.name:
+            entry["sha256"] = hashlib.sha256(data).hexdigest()
+    manifest.write_text(json.dumps(told), encoding="utf-8")
+
+
+@pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
+def test_a_sound_that_was_moved_is_found_in_every_example(shell, path):
+    outcome = shell.run("take", path)
+    take = shell.folder / outcome.out.splitlines()[0]
+    report = check_take(take)
+    measured = [finding for finding in report.findings if finding.name.endswith(("against the run", "the contacts"))]
+    assert {finding.ok for finding in measured} == {True}
+    late(take, 1)
+    found = {finding.name for finding in check_take(take).findings if finding.ok is False}
+    assert any(name.endswith("against the run") for name in found)
+    # A tenth of a second late is found by the contacts alone as well.
+    late(take, round(0.1 * soundfile.info(take / f"{take.name}.wav").samplerate))
+    found = {finding.name for finding in check_take(take).findings if finding.ok is False}
+    assert any(name.endswith("against the run") for name in found)
+    assert any(name.startswith("first sound") for name in found)

@@ -109,6 +109,17 @@ def test_without_portaudio_it_says_what_to_install(shell, small, speaker):
 
 
 @pytest.mark.parametrize(
+    ("what", "said"), [("nothere", "no such take or scene"), ("nothere.toml", "no such take or scene"), (".", "no WAV")]
+)
+def test_what_is_not_there_is_told_before_the_machine_is_asked(shell, speaker, what, said):
+    speaker(NO_LIBRARY)
+    outcome = shell.run("play", what)
+    assert outcome.code == 2
+    assert said in outcome.err
+    assert "PortAudio" not in outcome.err
+
+
+@pytest.mark.parametrize(
     ("device", "said"), [(NO_DEVICE, "Error querying device"), (BUSY_DEVICE, "Invalid sample rate")]
 )
 def test_without_a_device_it_says_so(shell, small, speaker, device, said):
@@ -172,7 +183,7 @@ def test_what_cannot_be_played_is_refused(shell, take, speaker):
     for damage, said in (
         (lambda: sound.write_bytes(b"no sound at all"), "cannot be read"),
         (sound.unlink, "no WAV"),
-        (lambda: shutil.rmtree(take), "no such file"),
+        (lambda: shutil.rmtree(take), "no such take or scene"),
     ):
         damage()
         outcome = shell.run("play", take.name)

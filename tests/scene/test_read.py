@@ -271,22 +271,25 @@ def test_the_default_microphone_is_1_m_in_front():
         + "turn = {axis = [1, 0, 0], angle = '90 deg'}\n"
     )
     (mic,) = parse_scene(text).mics
-    # +y turned by 90 degrees about x is +z.
-    assert mic.place_m == pytest.approx((1, 2, 4), abs=1e-15)
+    # +y turned by 90 degrees about x is +z, and +z is -y.
+    assert mic.place_m == pytest.approx((1.36, 1.52, 3.8), abs=1e-15)
     assert mic.pattern == "omni"
 
 
 @pytest.mark.parametrize(
-    ("shape", "place"),
+    ("shape", "middle"),
     [
-        # Half way between +y and +z, 1 m from the middle.
-        ("shape = 'bar'\nlength = 2\ndiameter = 0.01\n", (1, math.sqrt(0.5), math.sqrt(0.5))),
-        ("shape = 'plate'\nthickness = 0.01\noutline = {polygon = [[1, 1], [3, 1], [1, 5]]}\n", (2, 1, 3)),
+        ("shape = 'bar'\nlength = 2\ndiameter = 0.01\n", (1, 0, 0)),
+        ("shape = 'plate'\nthickness = 0.01\noutline = {polygon = [[1, 1], [3, 1], [1, 5]]}\n", (2, 0, 3)),
+        ("shape = 'membrane'\nthickness = 0.01\ntension = 100\noutline = {rectangle = [1, 2]}\n", (0, 0, 0)),
     ],
 )
-def test_it_stands_off_the_middle_of_the_body(shape, place):
+def test_it_stands_1_m_off_the_middle_of_the_body_and_off_its_planes_of_symmetry(shape, middle):
     (mic,) = parse_scene(HEAD + shape).mics
-    assert mic.place_m == pytest.approx(place)
+    away = [place - centre for place, centre in zip(mic.place_m, middle, strict=True)]
+    assert math.hypot(*away) == pytest.approx(1.0)
+    assert min(away) > 0.3
+    assert max(away) == away[1]
 
 
 def test_a_strike_names_its_body_by_name_or_number_and_may_leave_out_the_only_one():

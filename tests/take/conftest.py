@@ -15,6 +15,7 @@ from resonate.motion.channels import BodyCurves, Curves
 from resonate.scene.read import parse_scene
 from resonate.sound.levels import Delivered, measure
 from resonate.take.deliver import heading
+from resonate.take.excerpt import excerpts_of
 from resonate.take.glb import write_glb
 from resonate.take.manifest import Arrivals, Heard, write_manifest
 from resonate.take.tables import write_curves, write_events
@@ -181,13 +182,17 @@ def make_take(out, *, scene=None, record=None, late_samples=0):
         heard=20, heard_hz=20e3, count=45, solved_hz=80e3, swing=0, residual=np.array([1e-12, 3e-11])
     )
     names = tuple(mic.name for mic in scene.mics)
+    still = make_sound(scene, record)
+    begins = [[float(Fraction(event.begin_s) - scene.clock.begin)] for event in record.events]
+    pieces = excerpts_of(20.0 * still, np.array(begins), rate_hz=scene.clock.sample_rate, channels=names)
+    late = Arrivals(0.003, {"mug": dict.fromkeys(names, 0.0)}, {"mug": 0.0})
     write_manifest(
         path[".json"],
         scene,
         record,
         bodies=[SimpleNamespace(name="mug", family="line", inertia=inertia)],
         modes=[modes],
-        heard=Heard(levels, names, Arrivals(0.003, {"mug": dict.fromkeys(names, 0.0)})),
+        heard=Heard(levels, names, late, pieces),
         curves=curves,
         warnings=["body 'mug': a word to the wise"],
         files=[file for end, file in path.items() if end != ".json"],

@@ -68,7 +68,7 @@ def acceleration(track, times_s):
 
 
 FLAT = SimpleNamespace(
-    radius_m=0.1, warnings=(), weights=lambda place_m, reference_m: np.ones(len(HERTZ), complex) / reference_m
+    radius_m=0.1, doubts=(), weights=lambda place_m, reference_m: np.ones(len(HERTZ), complex) / reference_m
 )
 
 

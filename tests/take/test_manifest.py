@@ -85,7 +85,7 @@ def heard(peak_spl_db):
         mean_spl_db=80.0,
         full_scale_pa=20.0,
     )
-    return Heard(levels, ("mic",), Arrivals(0.0, {}))
+    return Heard(levels, ("mic",), Arrivals(0.0, {}, {}), ())
 
 
 def test_loud_takes_carry_a_warning_for_the_ears():
