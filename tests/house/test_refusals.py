@@ -301,7 +301,7 @@ def test_every_misfit_of_a_scene_is_told_at_once(shell):
 
 def test_a_turning_body_is_struck_as_it_stands_then(shell):
     # Half a turn about x in 0.1 s brings the lower side up: only the run knows, and says which strike.
-    text = SCENE.replace(SUPPORT, 'floating = true\nspin = [31.4159265, 0, 0]')
+    text = SCENE.replace(SUPPORT, "floating = true\nspin = [31.4159265, 0, 0]")
     text = text.replace('striker = "wooden knob"', 'striker = "wooden knob"\ndirection = [0, -1, 0]')
     write(shell, text)
     outcome = shell.run("take", "tray.toml")
