@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ast
 import itertools
 import re
 import subprocess
@@ -152,8 +153,11 @@ def test_the_lock_holds_one_fitting_version_of_everything_asked_for(python, syst
 def imported():
     """Top-level modules that the package imports."""
     for path in (ROOT / "resonate").rglob("*.py"):
-        for found in re.findall(r"^\s*(?:import|from) ([\w.]+)", path.read_text(encoding="utf-8"), re.MULTILINE):
-            yield found.partition(".")[0]
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.Import):
+                yield from (alias.name.partition(".")[0] for alias in node.names)
+            elif isinstance(node, ast.ImportFrom) and node.module and not node.level:
+                yield node.module.partition(".")[0]
 
 
 def test_what_the_package_imports_is_what_it_asks_for():
