@@ -43,12 +43,13 @@ class Surface:
 class Radiator:
     """Samples of the vibrating surface for the radiation model.
 
-    ``kind`` is ``baffled`` (flat faces: ``weights`` (n, 3) holds the area, m^2, in column 0) or
+    ``kind`` is ``baffled`` (flat faces: ``weights`` (n, 3) holds the area, m^2, in column 0), ``closed`` (the same
+    for the whole surface of a body) or
     ``dipoles`` (slices of a line: ``weights`` is the displaced plus added volume, m^3, for motion
     along body x, y, z). ``points_m`` (n, 3), ``normals`` (n, 3).
     """
 
-    kind: Literal["baffled", "dipoles"]
+    kind: Literal["baffled", "dipoles", "closed"]
     points_m: Array
     normals: Array
     weights: Array
@@ -63,7 +64,8 @@ class SurfaceSpot:
     point (``inf`` where the skin is too thin to have a compliance of its own);
     ``thickness_m`` the local thickness. ``mobility_power``: the power of frequency that the mean mobility follows
     beyond the mesh, where it is known better than a mesh can tell (0 on a plate, whose impedance is
-    8 sqrt(D rho h)); None: as the static compliance has it.
+    8 sqrt(D rho h)); None: as the static compliance has it. ``spread_m``: radius of the smallest patch that the mesh
+    resolves, where the body's own energies hold the give of a half-space under it (solids); 0 where they do not.
     """
 
     point_m: Array
@@ -73,6 +75,7 @@ class SurfaceSpot:
     poisson: float
     thickness_m: float
     mobility_power: float | None = None
+    spread_m: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,7 +118,7 @@ class Body(Protocol):
         """The name given in the scene."""
 
     @property
-    def family(self) -> Literal["line", "skin", "wall"]:
+    def family(self) -> Literal["line", "skin", "wall", "solid"]:
         """Which group of shapes it belongs to."""
 
     @property

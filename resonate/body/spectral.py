@@ -1,4 +1,4 @@
-"""High-order nodal elements on lines and mapped quadrilaterals.
+"""High-order nodal elements on lines, mapped quadrilaterals and mapped hexahedra.
 
 Lagrange polynomials on Gauss-Lobatto-Legendre nodes, integrated by Gauss-Legendre points, with geometry
 mapped by the same polynomials (isoparametric). Interpolation of high order resolves shear-flexible bars and
@@ -24,6 +24,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
     IntArray = NDArray[np.int64]
 
+_SPACE = 3
 # Two nodes closer than this fraction of the body's size are one node.
 _WELD = 1e-9
 # How far a curved side may reach beyond its nodes, as a share of its element.
@@ -97,6 +98,8 @@ def basis(order: int, points: Array) -> tuple[Array, Array]:
     if points.shape[1] == 1:
         value, slope = lagrange(order, points[:, 0])
         return value, slope[:, :, None]
+    if points.shape[1] == _SPACE:
+        return _basis_in_space(order, points)
     first, first_slope = lagrange(order, points[:, 0])
     second, second_slope = lagrange(order, points[:, 1])
     shape = (len(points), -1)
@@ -104,6 +107,23 @@ def basis(order: int, points: Array) -> tuple[Array, Array]:
     along = np.einsum("qi,qj->qij", first_slope, second).reshape(shape)
     across = np.einsum("qi,qj->qij", first, second_slope).reshape(shape)
     return value, np.stack((along, across), axis=2)
+
+
+def _basis_in_space(order: int, points: Array) -> tuple[Array, Array]:
+    value, slope = zip(*(lagrange(order, points[:, axis]) for axis in range(_SPACE)), strict=True)
+    shape = (len(points), -1)
+    slopes = []
+    for axis in range(_SPACE):
+        factors = [slope[k] if k == axis else value[k] for k in range(_SPACE)]
+        slopes.append(np.einsum("qi,qj,qk->qijk", *factors, optimize=True).reshape(shape))
+    return np.einsum("qi,qj,qk->qijk", *value, optimize=True).reshape(shape), np.stack(slopes, axis=2)
+
+
+def tensor(line: Array, weight: Array, dimension: int) -> tuple[Array, Array]:
+    """Points (n**dim, dim) and weights (n**dim,) of a rule on a line in every direction; the last runs fastest."""
+    points = np.stack(np.meshgrid(*[line] * dimension, indexing="ij"), axis=-1).reshape(-1, dimension)
+    weights = np.prod(np.stack(np.meshgrid(*[weight] * dimension, indexing="ij"), axis=-1), axis=-1)
+    return points, weights.ravel()
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,7 +142,7 @@ class Quadrature:
 
 @dataclass(frozen=True, slots=True)
 class Grid:
-    """Elements of one order over a line or a flat region.
+    """Elements of one order over a line, a flat region or a solid.
 
     ``nodes_m`` (n, dim) and ``elements`` (e, (order + 1)**dim), tensor order, last direction fastest.
     """
@@ -133,17 +153,16 @@ class Grid:
 
     @property
     def dimension(self) -> int:
-        """1 for lines, 2 for flat regions."""
+        """1 for lines, 2 for flat regions, 3 for solids."""
         return int(self.nodes_m.shape[1])
+
+    def value(self, local: Array) -> Array:
+        """Nodal functions (q, k) at ``local`` (q, dim)."""
+        return basis(self.order, local)[0]
 
     def quadrature(self) -> Quadrature:
         """Integrate exactly polynomials of twice the order (on unmapped elements)."""
-        line, weights = gauss(self.order + 1)
-        if self.dimension == 1:
-            points, weight = line[:, None], weights
-        else:
-            points = np.stack(np.meshgrid(line, line, indexing="ij"), axis=2).reshape(-1, 2)
-            weight = np.outer(weights, weights).ravel()
+        points, weight = tensor(*gauss(self.order + 1), self.dimension)
         value, local = basis(self.order, points)
         corners = self.nodes_m[self.elements]
         place = np.einsum("qk,ekd->eqd", value, corners)
@@ -153,13 +172,8 @@ class Grid:
         return Quadrature(value=value, slope=slope, weight=weight * np.abs(scale), place_m=place)
 
     def measure(self, chosen: NDArray[np.bool_] | None = None) -> Array:
-        """Length or area (n,) that stands for each node, m or m^2, in all elements or the ``chosen`` (e,) ones."""
-        nodes, weights = lobatto(self.order), lobatto_weights(self.order)
-        if self.dimension == 1:
-            points, weight = nodes[:, None], weights
-        else:
-            points = np.stack(np.meshgrid(nodes, nodes, indexing="ij"), axis=2).reshape(-1, 2)
-            weight = np.outer(weights, weights).ravel()
+        """Length, area or volume (n,) that stands for each node, SI, in all elements or the ``chosen`` (e,) ones."""
+        points, weight = tensor(lobatto(self.order), lobatto_weights(self.order), self.dimension)
         elements = self.elements if chosen is None else self.elements[chosen]
         _, slope = basis(self.order, points)
         jacobian = np.einsum("qks,ekd->eqds", slope, self.nodes_m[elements])
@@ -257,8 +271,8 @@ def line_grid(breaks_m: Array, counts: list[int], order: int) -> Grid:
 
 
 def weld(places_m: Array, order: int) -> Grid:
-    """Merge element nodes (e, k, 2) that coincide into one grid."""
-    flat = places_m.reshape(-1, 2)
+    """Merge element nodes (e, k, dim) that coincide into one grid."""
+    flat = places_m.reshape(-1, places_m.shape[2])
     size = float(np.ptp(flat, axis=0).max())
     from scipy.spatial import cKDTree
 

@@ -119,6 +119,14 @@ def _fixed_rows(kind: NamedHold | FixHold, held: Held, motion: csr_matrix, *, li
     return rows
 
 
+def _rolling_rows(held: Held, motion: csr_matrix) -> list[csr_matrix]:
+    """Displacement along the normal of each point: a face of a solid that slides on a wall."""
+    assert held.outward is not None  # noqa: S101 (solids give their normals)
+    moves = [motion[np.arange(len(held.points_m)) * 6 + axis] for axis in range(3)]
+    total = sum(diags(held.outward[:, axis]) @ moves[axis] for axis in range(1, 3))
+    return [diags(held.outward[:, 0]) @ moves[0] + total]
+
+
 def _tidy(rows: list[csr_matrix], width: int) -> csr_matrix:
     if not rows:
         return csr_matrix((0, width))
@@ -190,6 +198,7 @@ def supports(
     weight_n: float,
     centre_m: Array,
     line: bool,
+    solid: bool = False,
 ) -> Supports:
     """Turn the supports of a scene into sparse forms.
 
@@ -205,6 +214,9 @@ def supports(
         (3,) mass centre.
     line : bool
         Whether the shape is a line (its guided ends keep two transverse motions).
+    solid : bool
+        Whether it is a solid: a face that is guided or sliding keeps its motion along itself, and a pinned one is
+        held as firmly as a clamped one.
     """
     size = body.freedoms
     unused = body.unused()
@@ -214,7 +226,12 @@ def supports(
     places = [(hold, body.select(hold)) for hold in holds]
     for hold, held in places:
         kind = hold.hold
-        if isinstance(kind, NamedHold | FixHold):
+        if solid and isinstance(kind, NamedHold):
+            motion = body.motion(held.points_m)
+            moves = (np.arange(len(held.points_m))[:, None] * 6 + np.arange(3)).ravel()
+            rolls = kind.kind in ("guided", "sliding")
+            fixed.extend(_rolling_rows(held, motion) if rolls else [motion[moves]])
+        elif isinstance(kind, NamedHold | FixHold):
             fixed.extend(_fixed_rows(kind, held, body.motion(held.points_m), line=line))
         elif isinstance(kind, SpringHold):
             points, shares = held.spread()

@@ -30,6 +30,7 @@ _WORDS: Final = {
         "free edges are heard as if set in a wall: too loud ",
         "; edge-on and on the axis levels are wrong at every frequency",
     ),
+    "closed": ("solids sound as simple sources without their own shadow, up to 6 dB too quiet: ", ""),
     "thick line": ("compact dipoles make high modes of lines too loud: ", ""),
 }
 
@@ -38,7 +39,7 @@ _WORDS: Final = {
 class Doubt:
     """One body at one limit of its model: ``count`` of its ``heard`` modes lie beyond ``limit_hz``."""
 
-    kind: Literal["free edge", "thick line"]
+    kind: Literal["free edge", "thick line", "closed"]
     body: str
     count: int
     heard: int
@@ -46,6 +47,8 @@ class Doubt:
 
     def __str__(self) -> str:
         """Name the body, the limit, and how many of the heard modes lie beyond it."""
+        if self.kind == "closed":
+            return f"{self.body!r} ({self.count} modes)"
         limit = f"{self.limit_hz:.0f} Hz ({self.count} of {self.heard} modes)"
         return f"below {limit} on {self.body!r}" if self.kind == "free edge" else f"{self.body!r} above {limit}"
 
@@ -104,3 +107,9 @@ def line_doubts(body: Body, modes: ModeSet, air: Air) -> tuple[Doubt, ...]:
     limit_hz = COMPACT * air.speed_m_s / (2.0 * np.pi * half_m) if half_m > 0.0 else np.inf
     count = int(np.sum(heard > limit_hz))
     return (Doubt("thick line", body.name, count, len(heard), limit_hz),) if count else ()
+
+
+def closed_doubts(body: Body, modes: ModeSet) -> tuple[Doubt, ...]:
+    """Simple sources on a closed surface leave out what the body itself scatters, at every frequency."""
+    heard = max(modes.heard - modes.swing, 0)
+    return (Doubt("closed", body.name, heard, heard, float("inf")),) if heard else ()

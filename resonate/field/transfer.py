@@ -1,6 +1,6 @@
 """What a microphone hears of each mode: the one interface between bodies and sound.
 
-Two honest first models stand behind it: flat faces in a baffle and compact dipoles along lines.
+Honest first models stand behind it: flat faces in a baffle, compact dipoles along lines, simple sources on solids.
 A transfer solved from equivalent sources fits behind the same interface.
 """
 
@@ -10,8 +10,9 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
+from resonate.field.closed import ClosedSurface
 from resonate.field.dipoles import DipoleLine
-from resonate.field.doubts import face_doubts, line_doubts
+from resonate.field.doubts import closed_doubts, face_doubts, line_doubts
 from resonate.field.rayleigh import BaffledFace
 from resonate.field.samples import motion_of, samples_of
 
@@ -62,11 +63,13 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
     Returns
     -------
     Transfer
-        A baffled Rayleigh sum for skins and plates, compact dipoles for lines.
+        A baffled Rayleigh sum for skins and plates, compact dipoles for lines, simple sources for solids.
     """
     samples, motion, radiator = samples_of(body, modes, air), motion_of(body, modes), body.radiator
     if radiator.kind == "dipoles":
         return DipoleLine(samples, motion, radiator.weights, line_doubts(body, modes, air))
     outward = np.einsum("ihn,ni->hn", motion, radiator.normals)
+    if radiator.kind == "closed":
+        return ClosedSurface(samples, outward, radiator.weights[:, 0], closed_doubts(body, modes))
     doubts = face_doubts(body, modes, air, outward=outward, radius_m=samples.radius_m)
     return BaffledFace(samples, outward, radiator.normals, radiator.weights[:, 0], doubts)

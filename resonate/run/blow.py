@@ -155,6 +155,18 @@ def _gives(body: Body, modes: ModeSet, rows: Sequence[Array], store: ModeStore |
     return found
 
 
+def _without_half_space(give: Array, spot: SurfaceSpot, radius_m: float) -> Array:
+    """Take away what the contact law holds already: the give of a half-space under an evenly pressed disc.
+
+    The mean displacement under a force P spread evenly over a disc of radius a is 16 (1 - nu^2) P/(3 pi^2 E a)
+    (Timoshenko & Goodier, Theory of Elasticity, section 139: 0.54 (1 - nu^2) P/(E a)).
+    """
+    if spot.spread_m <= 0.0:
+        return give
+    own = 16.0 * (1.0 - spot.poisson**2) / (3.0 * np.pi**2 * spot.young_pa * radius_m)
+    return give - min(own, float(spot.normal @ give @ spot.normal)) * np.outer(spot.normal, spot.normal)
+
+
 def make_blows(
     strikes: Sequence[tuple[int, StrikeSpec]], body: Body, modes: ModeSet, *, store: ModeStore | None = None
 ) -> list[Blow]:
@@ -186,12 +198,14 @@ def make_blows(
     ]
     if not strikes:
         return []
-    radii = [
-        _stepped(local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, _closing(spec)).depth_m))
+    pressed = [
+        local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, _closing(spec)).depth_m)
         for (_, spec), local in zip(strikes, locals_, strict=True)
     ]
+    radii = [_stepped(max(size, spot.spread_m)) for size, spot in zip(pressed, spots, strict=True)]
     rows = _touched(body, spots, radii)
-    gives = _gives(body, modes, rows, store)
+    found = _gives(body, modes, rows, store)
+    gives = [_without_half_space(*each) for each in zip(found, spots, radii, strict=True)]
     return [
         Blow(
             strike=number,

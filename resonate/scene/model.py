@@ -35,15 +35,19 @@ from resonate.scene.shapes import (
     StringShape,
     TubeShape,
 )
+from resonate.scene.solids import BallShape, BlockShape, CylinderShape
 
 __all__ = [
+    "BallShape",
     "BandSpec",
     "BarShape",
+    "BlockShape",
     "BodySpec",
     "BoxPlace",
     "CircleOutline",
     "Clock",
     "CordHold",
+    "CylinderShape",
     "FixHold",
     "FrameRate",
     "HoldSpec",

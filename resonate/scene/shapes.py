@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from resonate.scene.kinds import Length, Part, number
 from resonate.scene.refused import RefusedError, shown
+from resonate.scene.solids import BallShape, BlockShape, CylinderShape, face_names, solid_spots
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping
@@ -308,7 +309,8 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | MembraneShape | PlateShape, Field(discriminator="kind")
+    BarShape | TubeShape | StringShape | MembraneShape | PlateShape | BlockShape | BallShape | CylinderShape,
+    Field(discriminator="kind"),
 ]
 
 SHAPES: Final[Mapping[str, type[Part]]] = {
@@ -317,6 +319,9 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "string": StringShape,
     "membrane": MembraneShape,
     "plate": PlateShape,
+    "block": BlockShape,
+    "ball": BallShape,
+    "cylinder": CylinderShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -326,7 +331,7 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "coil vessel sheet solid block ball cylinder lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "coil vessel sheet solid lumps assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
@@ -335,10 +340,17 @@ def is_line(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
     return isinstance(shape, BarShape | TubeShape | StringShape)
 
 
+def is_solid(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
+    """Whether a shape is a solid: block, ball or cylinder."""
+    return isinstance(shape, BlockShape | BallShape | CylinderShape)
+
+
 def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of the union)
     """Names that a support of this shape may use in ``where``."""
     if is_line(shape):
         return ("left", "right")
+    if is_solid(shape):
+        return face_names(shape)
     outline = shape.outline
     if isinstance(outline, RectangleOutline):
         return ("x-", "x+", "z-", "z+", "edge")
@@ -353,6 +365,8 @@ def spot_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
     """Names that a strike on this shape may use as ``spot``; the first is the default."""
     if is_line(shape):
         return ("centre", "left", "right")
+    if is_solid(shape):
+        return solid_spots(shape)
     if isinstance(shape.outline, RingOutline):
         return ("outer", "inner", "edge")
     return ("centre", "edge")
