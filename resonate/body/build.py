@@ -14,7 +14,8 @@ from resonate.body.line import LineBody
 from resonate.body.line_layout import lay_line
 from resonate.body.solid import SolidBody
 from resonate.body.solid_layout import lay_solid
-from resonate.scene.model import BallShape, BlockShape, CylinderShape, MembraneShape, PlateShape
+from resonate.body.solid_mesh import lay_mesh
+from resonate.scene.model import BallShape, BlockShape, CylinderShape, MembraneShape, PlateShape, SolidShape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -72,8 +73,8 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
     BodyError
         If the shape cannot be meshed or a support holds nothing of it.
     """
-    if isinstance(spec.shape, BlockShape | BallShape | CylinderShape):
-        solid = lay_solid(spec)
+    if isinstance(spec.shape, BlockShape | BallShape | CylinderShape | SolidShape):
+        solid = lay_mesh(spec) if isinstance(spec.shape, SolidShape) else lay_solid(spec)
         key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=solid.mesh)
         return SolidBody(spec, solid, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)

@@ -1,6 +1,7 @@
 """Solid bodies: three-dimensional elasticity.
 
-Fields: motion along x, y and z. Blocks, balls and cylinders stand on mapped hexahedra of high order. There is no
+Fields: motion along x, y and z. Blocks, balls and cylinders stand on mapped hexahedra of high order, solids from a
+file on quadratic tetrahedra. There is no
 thermoelastic loss here: a solid has no thin direction across which bending could drive heat while it rings.
 """
 
@@ -16,11 +17,12 @@ from scipy.sparse import coo_matrix, csr_matrix
 from resonate.body.body import Forms, Inertia, Radiator, Surface, SurfaceSpot
 from resonate.body.elastic import mass, stiffness, stiffness_law
 from resonate.body.reduce import bending_reach_m, reduced
+from resonate.body.solid_mesh import mesh_spot
 from resonate.body.solid_spot import REACH, solid_spot
 from resonate.body.spectral import ROUNDING
 from resonate.body.support import Held, Supports, supports
 from resonate.errors import BodyError
-from resonate.scene.model import BoxPlace, FixHold, NamedPlace
+from resonate.scene.model import BoxPlace, FixHold, NamedPlace, SolidShape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -201,7 +203,10 @@ class SolidBody:
 
     def spot(self, spot: SpotSpec) -> SurfaceSpot:
         """Find a spot on the surface."""
-        return solid_spot(self.spec, spot, spread_m=self.layout.spread_m)
+        spread = self.layout.spread_m
+        if isinstance(self.spec.shape, SolidShape):
+            return mesh_spot(self.spec, spot, spread_m=spread, size_m=self.layout.size_m)
+        return solid_spot(self.spec, spot, spread_m=spread)
 
     @cached_property
     def supports(self) -> Supports:

@@ -28,7 +28,7 @@ if TYPE_CHECKING:
 # A point further off than this share of the size is a mistake, not a rounding.
 REACH = 0.05
 _IN = 0.05
-_SIDES = {
+SIDES = {
     "top": (1, 1.0),
     "bottom": (1, -1.0),
     "right": (0, 1.0),
@@ -93,7 +93,7 @@ def _named(shape: Shape, name: str) -> Array:
     half_size: Array = 0.5 * (np.array(shape.size_m) if isinstance(shape, BlockShape) else np.full(3, shape.diameter_m))
     if name == "corner":
         return np.asarray(half_size * np.array([1.0 - 2.0 * _IN, 1.0, 1.0 - 2.0 * _IN]))
-    axis, sign = _SIDES[name]
+    axis, sign = SIDES[name]
     place = np.zeros(3)
     place[axis] = sign * half_size[axis]
     return place

@@ -79,6 +79,11 @@ class Faults:
         ordered = sorted(self._found, key=lambda pair: pair[0])
         return tuple(dict.fromkeys(fault for _, fault in ordered if fault not in excused))
 
+    @property
+    def where(self) -> str:
+        """Name of the file."""
+        return self._where
+
     def __bool__(self) -> bool:
         """Whether anything is wrong."""
         return bool(self._found)

@@ -35,7 +35,7 @@ from resonate.scene.shapes import (
     StringShape,
     TubeShape,
 )
-from resonate.scene.solids import BallShape, BlockShape, CylinderShape
+from resonate.scene.solids import BallShape, BlockShape, CylinderShape, SolidShape
 
 __all__ = [
     "BallShape",
@@ -67,6 +67,7 @@ __all__ = [
     "Scene",
     "ShapeSpec",
     "ShowSpec",
+    "SolidShape",
     "SoundSpec",
     "SpotSpec",
     "SpringHold",

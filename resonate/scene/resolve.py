@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 
 #: From the middle of a body to its default microphone, in the body frame: 1 m, mostly up, a little forward and along.
 FRONT: Final = (0.36, 0.8, 0.48)
+# Fields that shape nothing by themselves: where a material's values come from, a surface that its hash stands for.
+_SILENT: Final = frozenset({"source", "surface"})
 
 
 def default_microphone(body: BodySpec) -> MicSpec:
@@ -73,7 +75,7 @@ def digest_of(parts: dict[str, Any]) -> str:
 
 def _plain(value: Any) -> Any:  # noqa: ANN401 (a tree of any values)
     if isinstance(value, BaseModel):
-        return {name: _plain(getattr(value, name)) for name in type(value).model_fields if name != "source"}
+        return {name: _plain(getattr(value, name)) for name in type(value).model_fields if name not in _SILENT}
     if dataclasses.is_dataclass(value) and not isinstance(value, type):
         return {item.name: _plain(getattr(value, item.name)) for item in dataclasses.fields(value)}
     if isinstance(value, dict):

@@ -9,7 +9,7 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from resonate.scene.kinds import Length, Part, number
 from resonate.scene.refused import RefusedError, shown
-from resonate.scene.solids import BallShape, BlockShape, CylinderShape, face_names, solid_spots
+from resonate.scene.solids import BallShape, BlockShape, CylinderShape, SolidShape, face_names, solid_spots
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping
@@ -309,7 +309,15 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | MembraneShape | PlateShape | BlockShape | BallShape | CylinderShape,
+    BarShape
+    | TubeShape
+    | StringShape
+    | MembraneShape
+    | PlateShape
+    | BlockShape
+    | BallShape
+    | CylinderShape
+    | SolidShape,
     Field(discriminator="kind"),
 ]
 
@@ -322,6 +330,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "block": BlockShape,
     "ball": BallShape,
     "cylinder": CylinderShape,
+    "solid": SolidShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -331,7 +340,7 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "coil vessel sheet solid lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "coil vessel sheet lumps assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
@@ -341,8 +350,8 @@ def is_line(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
 
 
 def is_solid(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
-    """Whether a shape is a solid: block, ball or cylinder."""
-    return isinstance(shape, BlockShape | BallShape | CylinderShape)
+    """Whether a shape is a solid: block, ball, cylinder, or from a file."""
+    return isinstance(shape, BlockShape | BallShape | CylinderShape | SolidShape)
 
 
 def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of the union)

@@ -1,13 +1,14 @@
-"""Solid shapes: blocks, balls and cylinders."""
+"""Solid shapes: blocks, balls, cylinders, and solids from a file."""
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated, ClassVar, Literal
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import BeforeValidator, Field, InstanceOf, model_validator
 
 from resonate.scene.kinds import Length, Part, Triple, number, vector
-from resonate.scene.refused import RefusedError
+from resonate.scene.refused import RefusedError, shown
+from resonate.scene.surface import SolidSurface
 
 
 class BlockShape(Part):
@@ -43,11 +44,34 @@ class CylinderShape(Part):
         return self
 
 
+def _file(value: object) -> str:
+    if not isinstance(value, str) or not value.strip() or not value.isprintable():
+        raise RefusedError(f"{shown(value)} is not the name of a file", 'give a path, such as "cleat.stl"')
+    return value
+
+
+class SolidShape(Part):
+    """``file, unit``: the inside of a closed surface (OBJ, STL, PLY, GLB, OFF); origin at its mass centre.
+
+    The file is looked for beside the scene. ``surface`` is what was read and mended, ``content`` its hash.
+    """
+
+    set_by_reader: ClassVar[frozenset[str]] = frozenset({"kind", "surface", "content"})
+
+    kind: Literal["solid"] = "solid"
+    file: Annotated[str, BeforeValidator(_file)]
+    unit: Literal["m", "cm", "mm", "in", "ft"] | None = None
+    surface: InstanceOf[SolidSurface] | None = Field(default=None, exclude=True, repr=False)
+    content: str = ""
+
+
+AnySolid = BlockShape | BallShape | CylinderShape | SolidShape
+
 #: Names of the faces of a block.
 SIDES = ("x-", "x+", "y-", "y+", "z-", "z+")
 
 
-def face_names(shape: BlockShape | BallShape | CylinderShape) -> tuple[str, ...]:
+def face_names(shape: AnySolid) -> tuple[str, ...]:
     """Faces that a support may hold."""
     if isinstance(shape, BlockShape):
         return (*SIDES, "surface")
@@ -56,7 +80,7 @@ def face_names(shape: BlockShape | BallShape | CylinderShape) -> tuple[str, ...]
     return ("surface",)
 
 
-def solid_spots(shape: BlockShape | BallShape | CylinderShape) -> tuple[str, ...]:
+def solid_spots(shape: AnySolid) -> tuple[str, ...]:
     """Names of spots; the first is the default."""
     if isinstance(shape, BlockShape):
         return ("top", "bottom", "left", "right", "front", "back", "corner")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pathlib import Path as FilePath
 from typing import TYPE_CHECKING, Any
 
 from resonate.scene.bodies import (
@@ -28,6 +29,8 @@ from resonate.scene.names import choose, listing
 from resonate.scene.presets import resolved
 from resonate.scene.refused import Path, RefusedError, shown
 from resonate.scene.shapes import LATER_SHAPES, OUTLINES, SHAPES, BarShape, edge_names
+from resonate.scene.solids import SolidShape
+from resonate.scene.surface import load_surface
 
 if TYPE_CHECKING:
     from collections.abc import Collection
@@ -157,7 +160,18 @@ def _build_shape(kind: str, parts: dict[str, Any], path: Path, faults: Faults) -
         sound = outline is not None
         parts = {**parts, "outline": outline or OUTLINES["circle"].model_validate({"diameter": 1.0})}
     shape = faults.part(SHAPES[kind], parts, path)
+    if isinstance(shape, SolidShape):
+        return _with_surface(shape, path, faults)
     return shape if sound else None
+
+
+def _with_surface(shape: SolidShape, path: Path, faults: Faults) -> Part | None:
+    try:
+        surface = load_surface(FilePath(faults.where).parent / shape.file, shape.unit)
+    except RefusedError as error:
+        faults.add((*path, "file"), what=error.what, fix=error.fix)
+        return None
+    return shape.model_copy(update={"surface": surface, "content": surface.content})
 
 
 def _read_outline(value: object, path: Path, faults: Faults) -> Part | None:
