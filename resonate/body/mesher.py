@@ -27,8 +27,8 @@ if TYPE_CHECKING:
 # Seconds that a mesher may take: the quick one, and the robust one.
 _PATIENCE_S = {"clean": 60.0, "any": 240.0}
 _MODULES = {"clean": "netgen", "any": "pytetwild"}
-# By this share the volume may miss that of the surface.
-_VOLUME = 0.03
+# By this share the volume of straight elements may miss that of the surface: chords cut off much of a ball.
+_VOLUME = 0.12
 # Raise when meshes are made differently.
 _VERSION = 1
 

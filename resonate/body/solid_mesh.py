@@ -39,6 +39,8 @@ _LEAST = 6.0
 BUDGET = 8000
 # Above the budget by this factor, a mesh is made again, so many times at the most.
 _OVER, _AGAIN = 1.4, 3
+# By this share the volume of curved elements may miss that of the surface.
+_VOLUME = 0.03
 # Nodes in a volume of so many cubes of the element's size.
 _NODES_PER_CUBE = 7.0
 # What fills less of its box than this is a wall rather than a lump.
@@ -95,6 +97,13 @@ def lay_mesh(spec: BodySpec) -> SolidLayout:
         step *= float(max(1.1, (len(cells.nodes_m) / BUDGET) ** (1.0 / 3.0)))
         cells = fill(facets.points_m, facets.triangles, size_m=step, volume_m3=volume, name=spec.name)
     cells = _curved(cells, facets)
+    missed = float(cells.quadrature().weight.sum()) / volume - 1.0
+    if abs(missed) > _VOLUME:
+        raise BodyError(
+            what=f"elements of {1e3 * step:.2g} mm miss the volume of its surface by {missed:.1%}",
+            where=f"body {spec.name!r}",
+            fix="simplify the surface: thin fins and slots are lost between such elements",
+        )
     notes = [f"body {spec.name!r}: {note}" for note in spec.shape.surface.notes]
     if step > wanted * (1.0 + 1e-9):
         reach = top * wanted / step

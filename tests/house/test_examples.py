@@ -32,7 +32,8 @@ def test_an_example_makes_a_sound_take(shell, path):
 
 def test_together_they_show_every_shape_outline_and_support():
     bodies = [body for path in EXAMPLES for body in read_scene(path).bodies]
-    assert {body.shape.kind for body in bodies} == set(SHAPES)
+    # A solid needs a file beside the scene: examples are copied one by one.
+    assert {body.shape.kind for body in bodies} == set(SHAPES) - {"solid"}
     outlines = {body.shape.outline.kind for body in bodies if hasattr(body.shape, "outline")}
     assert outlines == set(OUTLINES)
     holds = [entry.hold for body in bodies for entry in body.support]
