@@ -90,7 +90,7 @@ class SolidBody:
     @property
     def warnings(self) -> tuple[str, ...]:
         """What a person should know."""
-        return self.layout.warnings
+        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:
@@ -154,6 +154,18 @@ class SolidBody:
         rows = moves.row // _FIELDS * 6 + moves.row % _FIELDS
         return csr_matrix(coo_matrix((moves.data, (rows, moves.col)), shape=(6 * count, self.freedoms)))
 
+    def turn(self, point_m: Array) -> csr_matrix:  # noqa: ARG002 (the body turns as a whole)
+        """Rotation (3, d) of the whole: the turn that best fits the motion of eight far corners."""
+        ways = np.stack(np.meshgrid(*[[-1.0, 1.0]] * 3, indexing="ij"), axis=-1).reshape(-1, 3)
+        nodes = self.grid.nodes_m
+        far = nodes[np.unique([int(np.argmax(nodes @ way)) for way in ways])]
+        arms = far - far.mean(axis=0)
+        second = np.sum(arms**2) * np.eye(3) - arms.T @ arms
+        cross = np.zeros((3, len(arms), 3))
+        for axis in range(3):
+            cross[axis] = np.cross(np.eye(3)[axis], arms)
+        return csr_matrix(np.linalg.inv(second) @ cross.reshape(3, -1)) @ self.probe(far)
+
     def unused(self) -> NDArray[np.int64]:
         """Every freedom moves."""
         return np.zeros(0, dtype=np.int64)
@@ -212,7 +224,10 @@ class SolidBody:
     def supports(self) -> Supports:
         """Supports over all freedoms."""
         weight = 0.0 if self.spec.floating else self.inertia.mass_kg * self.gravity_m_s2
-        return supports(self, self.spec.support, up=self.up, weight_n=weight, line=False, solid=True)
+        centre = self.inertia.centre_m
+        return supports(
+            self, self.spec.support, up=self.up, weight_n=weight, centre_m=centre, line=False, solid=True
+        )
 
     def forms(self) -> Forms:
         """Assemble T and V."""
