@@ -22,6 +22,9 @@ def _write_stl(path: Path, corners: Array) -> None:
     """Binary STL of triangles (t, 3, 3); the format has single precision only."""
     rows = np.zeros(len(corners), dtype=[("normal", "<f4", 3), ("corners", "<f4", (3, 3)), ("spare", "<u2")])
     rows["corners"] = corners
+    normal = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
+    # The reader goes by these to find edges.
+    rows["normal"] = normal / np.maximum(np.linalg.norm(normal, axis=1, keepdims=True), 1e-300)
     path.write_bytes(bytes(80) + len(corners).to_bytes(4, "little") + rows.tobytes())
 
 

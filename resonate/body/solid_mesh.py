@@ -34,7 +34,7 @@ if TYPE_CHECKING:
 
 # Elements for each of the shortest waves (two nodal distances each), and over the whole body at the least.
 _PER_WAVE = 6.0
-_LEAST = 6.0
+_LEAST = 8.0
 # Largest number of nodes, aimed at.
 BUDGET = 8000
 # Above the budget by this factor, a mesh is made again, so many times at the most.

@@ -202,9 +202,11 @@ def make_blows(
         local.patch_m(hertz.pulse(local.stiffness, spec.striker.mass_kg, _closing(spec)).depth_m)
         for (_, spec), local in zip(strikes, locals_, strict=True)
     ]
+    rows = _touched(body, spots, [_stepped(size) for size in pressed])
+    # The give of all that no mode holds is known only as finely as the mesh is.
     radii = [_stepped(max(size, spot.spread_m)) for size, spot in zip(pressed, spots, strict=True)]
-    rows = _touched(body, spots, radii)
-    found = _gives(body, modes, rows, store)
+    wide = _touched(body, spots, radii) if any(spot.spread_m for spot in spots) else rows
+    found = _gives(body, modes, wide, store)
     gives = [_without_half_space(*each) for each in zip(found, spots, radii, strict=True)]
     return [
         Blow(
