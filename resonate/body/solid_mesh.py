@@ -35,12 +35,14 @@ if TYPE_CHECKING:
 # Elements for each of the shortest waves (two nodal distances each), and over the whole body at the least.
 _PER_WAVE = 6.0
 _LEAST = 8.0
+# Elements through the thinnest extent of a lump; a wall has one at the least.
+_THROUGH = 4.0
 # Largest number of nodes, aimed at.
 BUDGET = 8000
 # Above the budget by this factor, a mesh is made again, so many times at the most.
 _OVER, _AGAIN = 1.4, 3
 # By this share the volume of curved elements may miss that of the surface.
-_VOLUME = 0.03
+_VOLUME = 0.02
 # Nodes in a volume of so many cubes of the element's size.
 _NODES_PER_CUBE = 7.0
 # What fills less of its box than this is a wall rather than a lump.
@@ -86,7 +88,7 @@ def lay_mesh(spec: BodySpec) -> SolidLayout:
     wall = float(size.min()) if lump else 4.0 * volume / area
     top = highest_hz(spec, size if lump else np.full(3, wall), volume)
     wave = float(wavenumbers(spec.material, np.full(3, wall), top).max())
-    wanted = min(2.0 * np.pi / (_PER_WAVE * wave), float(size.max()) / _LEAST)
+    wanted = min(2.0 * np.pi / (_PER_WAVE * wave), float(size.max()) / _LEAST, wall / (_THROUGH if lump else 1.0))
     least = float((_NODES_PER_CUBE * volume / BUDGET) ** (1.0 / 3.0))
     step = max(wanted, least)
     cells = fill(facets.points_m, facets.triangles, size_m=step, volume_m3=volume, name=spec.name)
