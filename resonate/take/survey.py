@@ -8,7 +8,7 @@ from __future__ import annotations
 import math
 import re
 from contextlib import contextmanager
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Final, cast
 
 import numpy as np
 
@@ -97,10 +97,11 @@ def _build(spec: BodySpec, place: int, scene: Scene, found: _Found) -> Built | N
     path: Path = ("body", place)
     world = scene.world
     try:
-        body: Built = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)  # type: ignore[assignment]
+        built = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)
     except BodyError as error:
         found.refuse(path, error)
         return None
+    body = cast("Built", built)
     for number, hold in enumerate(spec.support):
         try:
             body.select(hold)
