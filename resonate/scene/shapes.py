@@ -16,6 +16,9 @@ if TYPE_CHECKING:
 Profile = tuple[tuple[float, float, float], ...]
 Corners = tuple[tuple[float, float], ...]
 
+# Elements in a thinner corner are so long that rounding drowns their modes: found by trial, with room to spare.
+_SHARPEST_DEG: Final = 0.5
+
 _read_fraction = number("fraction", least=0.0, most=1.0)
 _read_height = number("length", least=0.0)
 _read_width = number("length", above=0.0)
@@ -89,6 +92,14 @@ def _check_polygon(corners: list[tuple[float, float]]) -> None:
     far = max(corners, key=lambda corner: math.dist(corner, corners[0]))
     if all(abs(_side(corners[0], far, corner)) < 1e-9 * size * size for corner in corners):
         raise RefusedError("the polygon has no area", "give corners that do not lie on one line")
+    for k, corner in enumerate(corners):
+        angle = _opening(corners[k - 1], corner, corners[(k + 1) % count])
+        if 0.0 < angle < _SHARPEST_DEG:
+            raise RefusedError(
+                f"corner {k + 1} opens by {angle:.2g} deg, too thin for a mesh",
+                f"open it to at least {_SHARPEST_DEG:g} deg, or cut its tip off with one corner more",
+                at=(k,),
+            )
     for k in range(count):
         for j in range(k + 1, count):
             adjacent = j == k + 1 or (k == 0 and j == count - 1)
@@ -105,6 +116,13 @@ Point = tuple[float, float]
 
 def _side(a: Point, b: Point, c: Point) -> float:
     return (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0])
+
+
+def _opening(before: Point, corner: Point, after: Point) -> float:
+    """Angle between the two sides of a corner, deg; 0 where one folds back on the other."""
+    one, two = ((end[0] - corner[0], end[1] - corner[1]) for end in (before, after))
+    cross, dot = one[0] * two[1] - one[1] * two[0], one[0] * two[0] + one[1] * two[1]
+    return math.degrees(math.atan2(abs(cross), dot))
 
 
 def _within(a: Point, b: Point, c: Point) -> bool:
