@@ -34,6 +34,7 @@ from resonate.scene.shapes import (
     ShapeSpec,
     StringShape,
     TubeShape,
+    VesselShape,
 )
 
 __all__ = [
@@ -71,6 +72,7 @@ __all__ = [
     "StringShape",
     "TakeSpec",
     "TubeShape",
+    "VesselShape",
     "WorldSpec",
 ]
 

@@ -1,0 +1,258 @@
+"""Where the elements of a vessel lie, and how many harmonics round its axis it needs."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from itertools import pairwise
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from resonate.body.flat_layout import SHEAR, plane_stress
+from resonate.body.meridian import Course, Piece, course, meridian
+from resonate.body.spectral import lobatto
+from resonate.body.waves import bending_wavenumber, top_frequency
+from resonate.body.vessel_spot import foot_of, share_of
+from resonate.scene.model import BoxPlace, PointPlace, VesselShape
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from resonate.scene.model import BodySpec, MaterialSpec
+
+    Array = NDArray[np.float64]
+    IntArray = NDArray[np.int64]
+
+ORDER = 8
+# Fields of each node and harmonic: motion outward, along y and round; turns towards the meridian and round.
+FIELDS = 5
+# Nodes for each wavelength of the highest wanted mode.
+_NODES_PER_WAVE = 5.0
+# An element is at most this many lengths sqrt(radius * wall) of the bending boundary layer.
+_LAYERS = 6.0
+_MOST_ELEMENTS = 96
+_MOST_HARMONICS = 96
+# Largest number of freedoms, all harmonics together.
+_BUDGET = 90_000
+_MARGIN = 1.15
+_STRAIGHT = 1e-6
+
+
+@dataclass(frozen=True)
+class VesselLayout:
+    """A vessel ready to be assembled.
+
+    ``nodes`` looks at the meridian at every node of every element, (e * k) in order; ``number`` (e, k, 5) are the
+    freedoms of one harmonic, ``freedoms`` of them; ``arc_m`` (e, k) is the way along the meridian;
+    ``harmonics``: the highest number N of waves round the axis. ``closed``: whether each end lies on the axis.
+    """
+
+    pieces: tuple[Piece, ...]
+    spans: tuple[tuple[int, float, float], ...]
+    nodes: Course
+    arc_m: Array
+    number: IntArray
+    freedoms: int
+    harmonics: int
+    closed: tuple[bool, bool]
+    rigidity: Array
+    warnings: tuple[str, ...]
+
+    @property
+    def elements(self) -> int:
+        """Number of elements along the meridian."""
+        return len(self.spans)
+
+    def per_node(self, values: Array) -> Array:
+        """Shape (e * k, ...) as (e, k, ...)."""
+        return values.reshape(self.elements, ORDER + 1, *values.shape[1:])
+
+
+def _stations(pieces: tuple[Piece, ...], count: int = 48) -> tuple[Course, Array]:
+    """Midpoints along the meridian and the length (k,) each stands for."""
+    seen, steps = [], []
+    for piece in pieces:
+        p = (np.arange(count) + 0.5) / count * piece.end
+        seen.append(course(piece, p))
+        steps.append(np.linalg.norm(piece.curve(p, 1), axis=1) * piece.end / count)
+    joined = Course(*(np.concatenate([getattr(at, key) for at in seen]) for key in Course.__dataclass_fields__))
+    return joined, np.concatenate(steps)
+
+
+def _waves(material: MaterialSpec, rigidity: Array, wall: Array, hertz: float) -> Array:
+    """Wavenumber (k,) of bending waves in a flat wall."""
+    stiff = float(np.sqrt(rigidity[0, 0] * rigidity[1, 1]))
+    density = material.density_kg_m3
+    return bending_wavenumber(
+        2.0 * np.pi * hertz,
+        stiffness=stiff * wall**3 / 12.0,
+        inertia=density * wall,
+        turning=density * wall**3 / 12.0,
+        shear=SHEAR * min(material.shear_pa[1:]) * wall,
+    )
+
+
+def _expected(material: MaterialSpec, rigidity: Array, at: Course, step: Array, hertz: float) -> float:
+    """Estimate the number of modes below a frequency.
+
+    Curvature stiffens: waves in the direction phi from the meridian need omega^2 above
+    E/rho (k_round cos^2 phi + k_meridian sin^2 phi)^2. Bolotin, PMM 24 (1960) 831; Wilkinson, JASA 43 (1968) 168.
+    """
+    omega2 = (2.0 * np.pi * hertz) ** 2
+    phi = (np.arange(24) + 0.5) / 24 * 0.5 * np.pi
+    bend, turn = at.curvature_1_m[:, :1], at.curvature_1_m[:, 1:]
+    young = min(material.young_pa[:2])
+    least = young / material.density_kg_m3 * (turn * np.cos(phi) ** 2 + bend * np.sin(phi) ** 2) ** 2
+    share = np.sqrt(np.maximum(1.0 - least / omega2, 0.0)).mean(axis=1)
+    area = 2.0 * np.pi * at.place_m[:, 0] * step
+    bending = float(area @ (share * _waves(material, rigidity, at.wall_m, hertz) ** 2)) / (4.0 * np.pi)
+    stretch = omega2 * material.density_kg_m3 * (1.0 / rigidity[0, 0] + 1.0 / rigidity[2, 2])
+    return bending + float(area.sum()) * stretch / (4.0 * np.pi)
+
+
+def harmonics_for(spec: BodySpec, rigidity: Array, at: Course, hertz: float) -> int:
+    """Highest number of waves round the axis that reaches down to a frequency."""
+    return int(np.ceil(float(np.max(at.place_m[:, 0] * _waves(spec.material, rigidity, at.wall_m, hertz))))) + 1
+
+
+def lay_vessel(spec: BodySpec) -> VesselLayout:
+    """Choose elements and harmonics from the highest wanted frequency, within a budget.
+
+    Raises
+    ------
+    BodyError
+        If the profile cannot be a shell.
+    """
+    shape = spec.shape
+    assert isinstance(shape, VesselShape)  # noqa: S101 (the caller sorts the kinds)
+    pieces = meridian(shape, spec.name)
+    rigidity = plane_stress(spec.material)
+    at, step = _stations(pieces)
+    top = top_frequency(
+        lambda hertz: _expected(spec.material, rigidity, at, step, hertz),
+        wanted=int(_MARGIN * spec.modes.most) + 8,
+        highest_hz=spec.modes.solved_or_default_hz,
+    )
+    harmonics = max(3, harmonics_for(spec, rigidity, at, top))
+    spans = _spans(spec, shape, pieces, rigidity, top)
+    per_harmonic = 2 * FIELDS * ORDER * len(spans)
+    allowed = max(3, min(_MOST_HARMONICS, int(_BUDGET / per_harmonic) - 1))
+    warnings: tuple[str, ...] = ()
+    if harmonics > allowed or len(spans) > _MOST_ELEMENTS:
+        reach = top * min(1.0, allowed / harmonics, _MOST_ELEMENTS / len(spans)) ** 2
+        warnings = (
+            f"body {spec.name!r}: {min(allowed, harmonics)} waves round the axis and "
+            f"{min(_MOST_ELEMENTS, len(spans))} elements along the wall instead of the {harmonics} and {len(spans)} "
+            f"that {top:.0f} Hz asks for; modes are resolved up to about {reach:.0f} Hz",
+        )
+        harmonics = min(allowed, harmonics)
+    return _number(pieces, spans, harmonics, rigidity, warnings)
+
+
+def _marks(spec: BodySpec, shape: VesselShape, pieces: tuple[Piece, ...]) -> list[tuple[int, float]]:
+    """Places (piece, parameter) that must fall on a node: point supports, ends of boxes, lugs."""
+    marks = [share_of(pieces, lug.at[0]) for lug in shape.lugs]
+    for hold in spec.support:
+        if isinstance(hold.where, PointPlace):
+            x, y, z = hold.where.point_m
+            marks.append(foot_of(pieces, np.array([np.hypot(x, z), y])))
+        elif isinstance(hold.where, BoxPlace):
+            for number, piece in enumerate(pieces):
+                p = np.linspace(0.0, piece.end, 257)
+                height = piece.curve(p, 0)[:, 1]
+                for level in (hold.where.low_m[1], hold.where.high_m[1]):
+                    crossing = np.flatnonzero((height[1:] - level) * (height[:-1] - level) < 0.0)
+                    part = (level - height[crossing]) / (height[crossing + 1] - height[crossing])
+                    marks.extend((number, float(q)) for q in p[crossing] + part * (p[1] - p[0]))
+    return marks
+
+
+def _spans(
+    spec: BodySpec, shape: VesselShape, pieces: tuple[Piece, ...], rigidity: Array, top: float
+) -> tuple[tuple[int, float, float], ...]:
+    spans: list[tuple[int, float, float]] = []
+    marks = _marks(spec, shape, pieces)
+    for number, piece in enumerate(pieces):
+        inside = [p for which, p in marks if which == number]
+        breaks = np.unique(np.clip(np.array([0.0, piece.end, *inside]), 0.0, piece.end))
+        breaks = breaks[np.concatenate(([True], np.diff(breaks) > 1e-6 * piece.end))]
+        breaks[-1] = piece.end
+        for low, high in pairwise(breaks):
+            at = course(piece, low + (np.arange(17) + 0.5) / 17 * (high - low))
+            length = float(np.linalg.norm(piece.curve(np.linspace(low, high, 17), 1), axis=1).mean() * (high - low))
+            wave = float(_waves(spec.material, rigidity, at.wall_m, top).max())
+            longest = 2.0 * np.pi * ORDER / _NODES_PER_WAVE / wave
+            round_m = 1.0 / np.maximum(np.abs(at.curvature_1_m).max(axis=1), 1e-9 / length)
+            layer = _LAYERS * float(np.sqrt(round_m * at.wall_m).min())
+            # A curved element turns by half a right angle at the most.
+            bend = float(np.abs(at.curvature_1_m[:, 0]).max()) * length / (0.25 * np.pi)
+            count = max(1, int(np.ceil(max(length / longest, length / layer, bend))))
+            ends = np.linspace(low, high, count + 1)
+            spans.extend((number, float(a), float(b)) for a, b in pairwise(ends))
+    return tuple(_thinned(spans, _MOST_ELEMENTS))
+
+
+def _thinned(spans: list[tuple[int, float, float]], most: int) -> list[tuple[int, float, float]]:
+    """Join neighbours of one piece until there are at most so many elements, if that is possible."""
+    while len(spans) > most:
+        fewer = []
+        k = 0
+        while k < len(spans):
+            if k + 1 < len(spans) and spans[k][0] == spans[k + 1][0]:
+                fewer.append((spans[k][0], spans[k][1], spans[k + 1][2]))
+                k += 2
+            else:
+                fewer.append(spans[k])
+                k += 1
+        if len(fewer) == len(spans):
+            break
+        spans = fewer
+    return spans
+
+
+def _number(
+    pieces: tuple[Piece, ...],
+    spans: tuple[tuple[int, float, float], ...],
+    harmonics: int,
+    rigidity: Array,
+    warnings: tuple[str, ...],
+) -> VesselLayout:
+    reference = 0.5 * (1.0 + lobatto(ORDER))
+    seen = [course(pieces[which], low + reference * (high - low)) for which, low, high in spans]
+    nodes = Course(*(np.concatenate([getattr(at, key) for at in seen]) for key in Course.__dataclass_fields__))
+    number = np.zeros((len(spans), ORDER + 1, FIELDS), dtype=np.int64)
+    count = 0
+    for e in range(len(spans)):
+        first = 0
+        if e > 0:
+            number[e, 0] = number[e - 1, -1]
+            first = 1
+            turn = np.abs(np.cross(seen[e].along[0], seen[e - 1].along[-1]))
+            if turn > _STRAIGHT or float(seen[e].along[0] @ seen[e - 1].along[-1]) < 0.0:
+                # A corner passes on no twisting moment: the turn round the meridian is each side's own.
+                number[e, 0, 4] = count
+                count += 1
+        rest = (ORDER + 1 - first) * FIELDS
+        number[e, first:] = np.arange(count, count + rest).reshape(-1, FIELDS)
+        count += rest
+    size = float(np.linalg.norm(np.ptp(nodes.place_m, axis=0)))
+    closed = (bool(nodes.place_m[0, 0] < 1e-12 * size), bool(nodes.place_m[-1, 0] < 1e-12 * size))
+    return VesselLayout(
+        pieces, spans, nodes, _arcs(pieces, spans), number, count, harmonics, closed, rigidity, warnings
+    )
+
+
+def _arcs(pieces: tuple[Piece, ...], spans: tuple[tuple[int, float, float], ...]) -> Array:
+    reference = 0.5 * (1.0 + lobatto(ORDER))
+    arcs, total = [], 0.0
+    point, weight = np.polynomial.legendre.leggauss(12)
+    for which, low, high in spans:
+        ends = low + reference * (high - low)
+        ways = [0.0]
+        for a, b in pairwise(ends):
+            p = 0.5 * (a + b) + 0.5 * (b - a) * point
+            speed = np.linalg.norm(pieces[which].curve(p, 1), axis=1)
+            ways.append(ways[-1] + float(0.5 * (b - a) * (weight @ speed)))
+        arcs.append(total + np.array(ways))
+        total += ways[-1]
+    return np.stack(arcs)
