@@ -39,6 +39,8 @@ if TYPE_CHECKING:
 _EVEN = (0, 1, 3)
 _ODD = (2, 4)
 _VERTICES = 5000
+# Nearer than this share of an element to a node is on it: one node moves the point, and not nine.
+_SNAP = 1e-5
 # Sums round the axis leave this much, by share, where they cancel.
 _CANCELS = 1e-12
 
@@ -210,6 +212,9 @@ class VesselBody:
             tangent = np.einsum("pk,pkd->pd", slope, corners)
             step = np.einsum("pd,pd->p", miss, tangent) / np.einsum("pd,pd->p", tangent, tangent)
             local = np.clip(local - step, -1.0, 1.0)
+        ends = lobatto(ORDER)
+        near = ends[np.argmin(np.abs(local[:, None] - ends), axis=1)]
+        local = np.where(np.abs(local - near) < _SNAP, near, local)
         value, _ = lagrange(ORDER, local)
         fibre = layout.per_node(0.5 * layout.nodes.wall_m[:, None] * layout.nodes.outward)[element]
         lean = np.einsum("pk,pkd->pd", value, fibre)

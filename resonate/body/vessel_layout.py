@@ -36,6 +36,7 @@ _MOST_HARMONICS = 96
 _BUDGET = 90_000
 _MARGIN = 1.15
 _STRAIGHT = 1e-6
+_LOOKS = 64
 
 
 @dataclass(frozen=True)
@@ -178,18 +179,26 @@ def _spans(
         breaks = breaks[np.concatenate(([True], np.diff(breaks) > 1e-6 * piece.end))]
         breaks[-1] = piece.end
         for low, high in pairwise(breaks):
-            at = course(piece, low + (np.arange(17) + 0.5) / 17 * (high - low))
-            length = float(np.linalg.norm(piece.curve(np.linspace(low, high, 17), 1), axis=1).mean() * (high - low))
-            wave = float(_waves(spec.material, rigidity, at.wall_m, top).max())
-            longest = 2.0 * np.pi * ORDER / _NODES_PER_WAVE / wave
-            round_m = 1.0 / np.maximum(np.abs(at.curvature_1_m).max(axis=1), 1e-9 / length)
-            layer = _LAYERS * float(np.sqrt(round_m * at.wall_m).min())
-            # A curved element turns by half a right angle at the most.
-            bend = float(np.abs(at.curvature_1_m[:, 0]).max()) * length / (0.25 * np.pi)
-            count = max(1, int(np.ceil(max(length / longest, length / layer, bend))))
-            ends = np.linspace(low, high, count + 1)
+            ends = _ends(spec, piece, rigidity, top, (low, high))
             spans.extend((number, float(a), float(b)) for a, b in pairwise(ends))
     return tuple(_thinned(spans, _MOST_ELEMENTS))
+
+
+def _ends(spec: BodySpec, piece: Piece, rigidity: Array, top: float, reach: tuple[float, float]) -> Array:
+    """Ends of the elements between two parameters: shorter where waves, boundary layers or bends are."""
+    edges = np.linspace(*reach, 4 * _LOOKS + 1)
+    at = course(piece, 0.5 * (edges[1:] + edges[:-1]))
+    length = np.linalg.norm(piece.curve(0.5 * (edges[1:] + edges[:-1]), 1), axis=1) * np.diff(edges)
+    wave = _waves(spec.material, rigidity, at.wall_m, top) * _NODES_PER_WAVE / (2.0 * np.pi * ORDER)
+    tightest = np.abs(at.curvature_1_m).max(axis=1)
+    layer = np.sqrt(tightest / at.wall_m) / _LAYERS
+    # A curved element turns by half a right angle at the most.
+    bend = np.abs(at.curvature_1_m[:, 0]) / (0.25 * np.pi)
+    way = np.concatenate(([0.0], np.cumsum(length * np.maximum(np.maximum(wave, layer), bend))))
+    count = max(1, int(np.ceil(way[-1] - 1e-9)))
+    ends = np.interp(np.arange(count + 1) / count, way / way[-1], edges)
+    ends[0], ends[-1] = reach
+    return np.asarray(ends)
 
 
 def _thinned(spans: list[tuple[int, float, float]], most: int) -> list[tuple[int, float, float]]:
