@@ -74,8 +74,8 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
     """
     if isinstance(spec.shape, VesselShape):
         wall = lay_vessel(spec)
-        mesh = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
-        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=mesh)
+        shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
+        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
         return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)
     layout = lay_flat(spec) if flat else lay_line(spec)

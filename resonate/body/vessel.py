@@ -12,10 +12,9 @@ from functools import cached_property
 from typing import TYPE_CHECKING, Literal
 
 import numpy as np
-from scipy.sparse import block_diag, coo_matrix, csr_matrix, diags, hstack, vstack
+from scipy.sparse import block_diag, coo_matrix, csr_matrix, diags, hstack
 
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
-from resonate.body.display import join, lattice
 from resonate.body.heat import Heat
 from resonate.body.meridian import course
 from resonate.body.reduce import bending_reach_m, reduced
@@ -23,9 +22,10 @@ from resonate.body.revolution import harmonic_forms, heating, integrated, pole_r
 from resonate.body.spectral import ROUNDING, lagrange, lobatto, lobatto_weights
 from resonate.body.support import Held, Supports, supports
 from resonate.body.vessel_layout import FIELDS, ORDER, harmonics_for
+from resonate.body.vessel_skin import display, patches
 from resonate.body.vessel_spot import check_reach, rim_first, share_of, vessel_spot
 from resonate.errors import BodyError
-from resonate.scene.model import BoxPlace, NamedPlace, VesselShape
+from resonate.scene.model import BoxPlace, FixHold, NamedHold, NamedPlace, VesselShape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -38,7 +38,6 @@ if TYPE_CHECKING:
 # Fields that vary as cos(n theta); the others vary as sin(n theta).
 _EVEN = (0, 1, 3)
 _ODD = (2, 4)
-_VERTICES = 5000
 # Nearer than this share of an element to a node is on it: one node moves the point, and not nine.
 _SNAP = 1e-5
 # Sums round the axis leave this much, by share, where they cancel.
@@ -140,59 +139,14 @@ class VesselBody:
 
     @cached_property
     def surface(self) -> Surface:
-        """Closed display mesh: outside, inside and the open edges."""
-        layout = self.layout
-        step = next(k for k in (1, 2, 4, 8) if k == ORDER or layout.elements * ORDER / k <= _VERTICES / 96)
-        kept = (np.arange(layout.elements)[:, None] * (ORDER + 1) + np.arange(0, ORDER, step)).ravel()
-        kept = np.concatenate((kept, [layout.elements * (ORDER + 1) - 1]))
-        corner = np.flatnonzero(kept % (ORDER + 1) == 0)
-        del corner
-        nodes = layout.nodes
-        middle, fibre = nodes.place_m[kept], 0.5 * nodes.wall_m[kept, None] * nodes.outward[kept]
-        around = int(np.clip(_VERTICES / (2 * len(kept)), 24, 96))
-        turn = np.linspace(0.0, 2.0 * np.pi, around + 1)
-        turn[-1] = 0.0
-
-        def spun(curve: Array) -> Array:
-            radius = np.maximum(curve[:, :1], 0.0)
-            height = np.broadcast_to(curve[:, 1:], (len(curve), len(turn)))
-            return np.stack((radius * np.cos(turn), height, radius * np.sin(turn)), axis=2)
-
-        outer, inner = middle + fibre, middle - fibre
-        sheets = [spun(outer), spun(inner[::-1])]
-        if not layout.closed[1]:
-            sheets.append(spun(np.stack((outer[-1], inner[-1]))))
-        if not layout.closed[0]:
-            sheets.append(spun(np.stack((inner[0], outer[0]))))
-        return join([lattice(sheet) for sheet in sheets])
+        """Closed display mesh."""
+        return display(self.layout)
 
     @cached_property
     def radiator(self) -> Radiator:
         """Patches of the outside with their areas."""
-        layout, nodes = self.layout, self.layout.nodes
-        heard = harmonics_for(self.spec, layout.rigidity, nodes, self.bands.heard_hz)
-        around = 2 * min(heard, layout.harmonics) + 2
-        turn = 2.0 * np.pi * np.arange(around) / around
-        place = nodes.place_m + 0.5 * nodes.wall_m[:, None] * nodes.outward
-        _, slope = lagrange(ORDER, lobatto(ORDER))
-        speed = np.linalg.norm(np.einsum("qk,ekd->eqd", slope, layout.per_node(place)), axis=2)
-        ring = (speed * lobatto_weights(ORDER)).ravel() * np.maximum(place[:, 0], 0.0) * 2.0 * np.pi / around
-        kept = ring > 1e-9 * float(ring.max())
-        place, out, ring = place[kept], nodes.outward[kept], ring[kept]
-        points, normals = (
-            np.stack(
-                (
-                    what[:, :1] * np.cos(turn),
-                    np.broadcast_to(what[:, 1:], (len(what), around)),
-                    what[:, :1] * np.sin(turn),
-                ),
-                axis=2,
-            ).reshape(-1, 3)
-            for what in (place, out)
-        )
-        weights = np.zeros_like(points)
-        weights[:, 0] = np.repeat(ring, around)
-        return Radiator("surface", points, normals, weights)
+        heard = harmonics_for(self.spec, self.layout.rigidity, self.layout.nodes, self.bands.heard_hz)
+        return patches(self.layout, around=2 * min(heard, self.layout.harmonics) + 2)
 
     def locate(self, flat: Array) -> tuple[NDArray[np.int64], Array, Array]:
         """Element (k,), place along it and across the wall, both in [-1, 1], nearest to points (k, 2)."""
@@ -245,7 +199,7 @@ class VesselBody:
         gain *= value[:, :, None, None]
         number = self.layout.number[element]
         even, odd = (self._rows(gain[..., fields], number[..., fields]) for fields in (_EVEN, _ODD))
-        groups = []
+        groups: list[csr_matrix] = []
         for n in range(self.layout.harmonics + 1):
             cosine, sine = (diags(np.repeat(wave, 6)) for wave in (np.cos(n * theta), np.sin(n * theta)))
             groups.extend((cosine @ even + sine @ odd, sine @ even - cosine @ odd))
@@ -303,7 +257,7 @@ class VesselBody:
 
     def select(self, hold: HoldSpec) -> Held:
         """Find the material points of one support."""
-        where, pieces = hold.where, self.layout.pieces
+        where, layout, pieces = hold.where, self.layout, self.layout.pieces
         if isinstance(where, NamedPlace):
             rings, outward = [], []
             for name in where.names:
@@ -311,12 +265,15 @@ class VesselBody:
                 piece = pieces[0 if first else -1]
                 at = course(piece, np.array([0.0 if first else piece.end]))
                 ring = self._circle(at.place_m[0])
+                if len(ring) == 1 and _stops_turning(hold):
+                    # A stem as thick as the wall: a single point of a shell holds no turn about the axis.
+                    ring = np.concatenate((ring, self._circle(layout.stem(first=first))))
                 out = (-1.0 if first else 1.0) * at.along[0]
                 turn = np.arctan2(ring[:, 2], ring[:, 0])
                 rings.append(ring)
                 outward.append(
                     np.stack((out[0] * np.cos(turn), np.full(len(turn), out[1]), out[0] * np.sin(turn)), axis=1)
-                    * (len(ring) > 1)
+                    * (np.hypot(ring[:, 0], ring[:, 2]) > 0.0)[:, None]
                 )
             share = np.concatenate([np.full(len(ring), 1.0 / len(ring)) for ring in rings])
             return Held.of(np.concatenate(rings), share, outward=np.concatenate(outward), places=len(rings))
@@ -326,8 +283,8 @@ class VesselBody:
         flat = np.array([[np.hypot(point[0], point[2]), point[1]]])
         element, local, across = self.locate(flat)
         value, _ = lagrange(ORDER, local)
-        nodes = self.layout.nodes
-        there = self.layout.per_node(
+        nodes = layout.nodes
+        there = layout.per_node(
             nodes.place_m + float(across[0]) * 0.5 * nodes.wall_m[:, None] * nodes.outward
         )[element[0]]
         check_reach(self.spec, pieces, point, float(np.linalg.norm(value[0] @ there - flat[0])))
@@ -400,6 +357,13 @@ class VesselBody:
             rows.extend([np.sqrt(_angle(n)) * (one.plain + n * one.turned)] * 2)
         relax = one.wall_m**2 / (np.pi**2 * heat.diffusivity_m2_s)
         return (HeatForm(csr_matrix(block_diag(rows, format="csr")), np.tile(relax, self.copies)),)
+
+
+def _stops_turning(hold: HoldSpec) -> bool:
+    kind = hold.hold
+    if isinstance(kind, NamedHold):
+        return kind.kind in ("clamped", "guided")
+    return isinstance(kind, FixHold) and "ry" in kind.axes
 
 
 def _angle(n: int) -> float:

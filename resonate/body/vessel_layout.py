@@ -11,9 +11,9 @@ import numpy as np
 from resonate.body.flat_layout import SHEAR, plane_stress
 from resonate.body.meridian import Course, Piece, course, meridian
 from resonate.body.spectral import lobatto
-from resonate.body.waves import bending_wavenumber, top_frequency
 from resonate.body.vessel_spot import foot_of, share_of
-from resonate.scene.model import BoxPlace, PointPlace, VesselShape
+from resonate.body.waves import bending_wavenumber, top_frequency
+from resonate.scene.model import BoxPlace, NamedPlace, PointPlace, VesselShape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -64,6 +64,12 @@ class VesselLayout:
         """Number of elements along the meridian."""
         return len(self.spans)
 
+    def stem(self, *, first: bool) -> Array:
+        """Radius and height of the first node at least half a wall off the axis, at one end."""
+        order = slice(None) if first else slice(None, None, -1)
+        place, wall = self.nodes.place_m[order], self.nodes.wall_m[order]
+        return np.asarray(place[int(np.argmax(place[:, 0] >= (0.5 - 1e-6) * wall))])
+
     def per_node(self, values: Array) -> Array:
         """Shape (e * k, ...) as (e, k, ...)."""
         return values.reshape(self.elements, ORDER + 1, *values.shape[1:])
@@ -108,7 +114,7 @@ def _expected(material: MaterialSpec, rigidity: Array, at: Course, step: Array, 
     area = 2.0 * np.pi * at.place_m[:, 0] * step
     bending = float(area @ (share * _waves(material, rigidity, at.wall_m, hertz) ** 2)) / (4.0 * np.pi)
     stretch = omega2 * material.density_kg_m3 * (1.0 / rigidity[0, 0] + 1.0 / rigidity[2, 2])
-    return bending + float(area.sum()) * stretch / (4.0 * np.pi)
+    return float(bending + float(area.sum()) * stretch / (4.0 * np.pi))
 
 
 def harmonics_for(spec: BodySpec, rigidity: Array, at: Course, hertz: float) -> int:
@@ -151,10 +157,16 @@ def lay_vessel(spec: BodySpec) -> VesselLayout:
 
 
 def _marks(spec: BodySpec, shape: VesselShape, pieces: tuple[Piece, ...]) -> list[tuple[int, float]]:
-    """Places (piece, parameter) that must fall on a node: point supports, ends of boxes, lugs."""
+    """Places (piece, parameter) that must fall on a node: point supports, stems, ends of boxes, lugs."""
     marks = [share_of(pieces, lug.at[0]) for lug in shape.lugs]
+    ends = [(0, 0.0, 1.0), (len(pieces) - 1, pieces[-1].end, -1.0)]
     for hold in spec.support:
-        if isinstance(hold.where, PointPlace):
+        if isinstance(hold.where, NamedPlace):
+            for number, end, way in ends:
+                at = course(pieces[number], np.array([end]))
+                if at.place_m[0, 0] == 0.0:
+                    marks.append((number, end + way * 0.5 * float(at.wall_m[0])))
+        elif isinstance(hold.where, PointPlace):
             x, y, z = hold.where.point_m
             marks.append(foot_of(pieces, np.array([np.hypot(x, z), y])))
         elif isinstance(hold.where, BoxPlace):

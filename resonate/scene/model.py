@@ -34,8 +34,8 @@ from resonate.scene.shapes import (
     ShapeSpec,
     StringShape,
     TubeShape,
-    VesselShape,
 )
+from resonate.scene.vessel import LugSpec, VesselShape
 
 __all__ = [
     "BandSpec",
@@ -49,6 +49,7 @@ __all__ = [
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
+    "LugSpec",
     "MaterialSpec",
     "MembraneShape",
     "MicSpec",

@@ -11,7 +11,8 @@ from typing import TYPE_CHECKING, Any, Final
 from pydantic import BaseModel
 
 from resonate.scene.happenings import MicSpec
-from resonate.scene.shapes import PolygonOutline, VesselShape, is_line
+from resonate.scene.shapes import PolygonOutline, is_line
+from resonate.scene.vessel import VesselShape
 
 if TYPE_CHECKING:
     from resonate.scene.bodies import BodySpec
