@@ -30,6 +30,10 @@ FIELDS = 5
 _NODES_PER_WAVE = 5.0
 # An element is at most this many lengths sqrt(radius * wall) of the bending boundary layer.
 _LAYERS = 6.0
+# Length of the element at a free edge, in walls.
+_EDGE = 2.5
+# A curved element turns by half a right angle at the most, rad.
+_BEND = 0.25 * np.pi
 _MOST_ELEMENTS = 96
 _MOST_HARMONICS = 96
 # Largest number of freedoms, all harmonics together.
@@ -186,7 +190,7 @@ def _spans(
     spans: list[tuple[int, float, float]] = []
     marks = _marks(spec, shape, pieces)
     for number, piece in enumerate(pieces):
-        inside = [p for which, p in marks if which == number]
+        inside = [p for which, p in marks if which == number] + _edges(piece)
         breaks = np.unique(np.clip(np.array([0.0, piece.end, *inside]), 0.0, piece.end))
         breaks = breaks[np.concatenate(([True], np.diff(breaks) > 1e-6 * piece.end))]
         breaks[-1] = piece.end
@@ -194,6 +198,18 @@ def _spans(
             ends = _ends(spec, piece, rigidity, top, (low, high))
             spans.extend((number, float(a), float(b)) for a, b in pairwise(ends))
     return tuple(_thinned(spans, _MOST_ELEMENTS))
+
+
+def _edges(piece: Piece) -> list[float]:
+    """Marks off the free or bent ends of a piece, where the twisting moment dies away within a third of the wall."""
+    ends = np.array([0.0, piece.end])
+    at = course(piece, ends)
+    steps = _EDGE * at.wall_m
+    return [
+        float(abs(end - step))
+        for end, step, radius in zip(ends, steps, at.place_m[:, 0], strict=True)
+        if radius > step and 3.0 * step < piece.end
+    ]
 
 
 def _ends(spec: BodySpec, piece: Piece, rigidity: Array, top: float, reach: tuple[float, float]) -> Array:
@@ -204,8 +220,7 @@ def _ends(spec: BodySpec, piece: Piece, rigidity: Array, top: float, reach: tupl
     wave = _waves(spec.material, rigidity, at.wall_m, top) * _NODES_PER_WAVE / (2.0 * np.pi * ORDER)
     tightest = np.abs(at.curvature_1_m).max(axis=1)
     layer = np.sqrt(tightest / at.wall_m) / _LAYERS
-    # A curved element turns by half a right angle at the most.
-    bend = np.abs(at.curvature_1_m[:, 0]) / (0.25 * np.pi)
+    bend = np.abs(at.curvature_1_m[:, 0]) / _BEND
     way = np.concatenate(([0.0], np.cumsum(length * np.maximum(np.maximum(wave, layer), bend))))
     count = max(1, int(np.ceil(way[-1] - 1e-9)))
     ends = np.interp(np.arange(count + 1) / count, way / way[-1], edges)
@@ -248,8 +263,7 @@ def _number(
         if e > 0:
             number[e, 0] = number[e - 1, -1]
             first = 1
-            turn = np.abs(np.cross(seen[e].along[0], seen[e - 1].along[-1]))
-            if turn > _STRAIGHT or float(seen[e].along[0] @ seen[e - 1].along[-1]) < 0.0:
+            if float(np.linalg.norm(seen[e].along[0] - seen[e - 1].along[-1])) > _STRAIGHT:
                 # A corner passes on no twisting moment: the turn round the meridian is each side's own.
                 number[e, 0, 4] = count
                 count += 1

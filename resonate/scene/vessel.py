@@ -123,6 +123,12 @@ class LugSpec(Part):
         return {**data, "at": tuple(shares)}
 
 
+def _lugs(value: object) -> object:
+    if not isinstance(value, list | tuple):
+        raise RefusedError(f"{shown(value)} is no list of lugs", "give a list: [{mass = .., at = [.., ..]}]")
+    return tuple(value)
+
+
 class VesselShape(Part):
     """``profile, wall, smooth, lugs``: a wall of revolution round y.
 
@@ -135,7 +141,7 @@ class VesselShape(Part):
     profile_m: Annotated[Rows, BeforeValidator(_rows)] = Field(validation_alias="profile")
     wall_m: Annotated[Walls, BeforeValidator(_walls)] = Field(validation_alias="wall")
     smooth: Flag = False
-    lugs: tuple[LugSpec, ...] = ()
+    lugs: Annotated[tuple[LugSpec, ...], BeforeValidator(_lugs)] = ()
 
     @model_validator(mode="after")
     def _matching(self) -> VesselShape:
