@@ -20,10 +20,8 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
-# A wall that meets the axis flatter than this is a dome or a disc; steeper, it is a tip.
-_FLAT = 0.98
-# Two straight pieces that turn by less than this (rad) are one.
-_STRAIGHT = 1e-6
+# Least cosine of the slope with which a wall meets the axis as a dome or a disc; steeper, it is a tip.
+_FLAT = 0.9
 # Points at which a curve is looked at.
 _LOOKS = 64
 

@@ -23,7 +23,7 @@ from scipy.sparse import coo_matrix, csr_matrix
 
 from resonate.body.flat_layout import SHEAR
 from resonate.body.spectral import gauss, lagrange
-from resonate.body.vessel_layout import FIELDS, ORDER, VesselLayout
+from resonate.body.vessel_layout import FIELDS, KINK, ORDER, VesselLayout
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -34,6 +34,8 @@ if TYPE_CHECKING:
 
 _ALONG = ORDER + 3
 _ACROSS = 4
+# Stiffness of a hinge at a kink, in shear modulus times wall^2: as a strip of a hundredth of the wall would twist.
+_HINGE = 8.0
 
 
 @dataclass(frozen=True)
@@ -168,14 +170,64 @@ def harmonic_forms(layout: VesselLayout, material: MaterialSpec) -> Harmonic:
         weighted = (right * at.volume[..., None, None]).reshape(layout.elements, -1, size)
         return np.asarray(left.reshape(layout.elements, -1, size).transpose(0, 2, 1) @ weighted)
 
+    kinks = _kinks(layout)
     stress, stress_turned = law @ at.strain, law @ at.turned
     mixed = product(at.strain, stress_turned)
     return Harmonic(
-        plain=_gather(layout, product(at.strain, stress)),
-        mixed=_gather(layout, mixed + mixed.transpose(0, 2, 1)),
-        round=_gather(layout, product(at.turned, stress_turned)),
+        plain=_gather(layout, product(at.strain, stress)) + kinks.plain.T @ kinks.plain,
+        mixed=_gather(layout, mixed + mixed.transpose(0, 2, 1))
+        + kinks.plain.T @ kinks.turned
+        + kinks.turned.T @ kinks.plain,
+        round=_gather(layout, product(at.turned, stress_turned)) + kinks.turned.T @ kinks.turned,
         mass=_gather(layout, material.density_kg_m3 * product(at.moved, at.moved)),
     )
+
+
+@dataclass(frozen=True)
+class _Kinks:
+    # Rows (c, f) whose square is twice an energy per radian: plain + n turned.
+    plain: csr_matrix
+    turned: csr_matrix
+
+
+def _kinks(layout: VesselLayout) -> _Kinks:
+    """Stiff hinges that pass the twisting moment on at a slight kink of the wall.
+
+    The turn of the matter at the kink has a part along either tangent, which is the turn of that side's fibres, and
+    one along the normal, which is the mean turn of both sides in their own planes: the two turns of the fibres
+    differ by the share of it that the angle brings in. Without this a wall of many facets would have no stiffness
+    against twist.
+    """
+    nodes = layout.nodes
+    place, along, outward, wall = (
+        layout.per_node(part) for part in (nodes.place_m, nodes.along, nodes.outward, nodes.wall_m)
+    )
+    rows: list[tuple[Array, Array]] = []
+    for e in range(1, layout.elements):
+        one, other = layout.number[e - 1, -1, 4], layout.number[e, 0, 4]
+        if one == other or float(along[e - 1, -1] @ along[e, 0]) < KINK:
+            continue
+        both = outward[e - 1, -1] + outward[e, 0]
+        share = float((along[e, 0] - along[e - 1, -1]) @ both) / float(both @ both)
+        radius, thick = float(place[e, 0, 0]), float(min(wall[e - 1, -1], wall[e, 0]))
+        stiff = np.sqrt(_HINGE * layout.rigidity[2, 2] * thick**2 * radius)
+        plain, turned = np.zeros(layout.freedoms), np.zeros(layout.freedoms)
+        plain[other], plain[one] = stiff, -stiff
+        for side, end, local in ((e - 1, -1, 1.0), (e, 0, -1.0)):
+            _, slope = lagrange(ORDER, np.array([local]))
+            speed = float(np.linalg.norm(slope[0] @ place[side]))
+            # Half of v' - (-t_r v - n t.u)/r.
+            gain = 0.5 * stiff * share
+            number = layout.number[side]
+            np.add.at(plain, number[:, 2], gain * slope[0] / speed)
+            plain[number[end, 2]] += gain * along[side, end, 0] / radius
+            for axis in range(2):
+                turned[number[end, axis]] += gain * along[side, end, axis] / radius
+        rows.append((plain, turned))
+    if not rows:
+        empty = csr_matrix((0, layout.freedoms))
+        return _Kinks(empty, empty)
+    return _Kinks(csr_matrix(np.array([row[0] for row in rows])), csr_matrix(np.array([row[1] for row in rows])))
 
 
 @dataclass(frozen=True)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import TYPE_CHECKING
 
@@ -30,6 +30,8 @@ FIELDS = 5
 _NODES_PER_WAVE = 5.0
 # An element is at most this many lengths sqrt(radius * wall) of the bending boundary layer.
 _LAYERS = 6.0
+# Least cosine of the angle of a kink that passes the twisting moment on; at a corner it has nowhere to go.
+KINK = 0.7
 # Length of the element at a free edge, in walls.
 _EDGE = 2.5
 # A curved element turns by half a right angle at the most, rad.
@@ -37,7 +39,7 @@ _BEND = 0.25 * np.pi
 _MOST_ELEMENTS = 96
 _MOST_HARMONICS = 96
 # Largest number of freedoms, all harmonics together.
-_BUDGET = 90_000
+_BUDGET = 130_000
 _MARGIN = 1.15
 _STRAIGHT = 1e-6
 _LOOKS = 64
@@ -145,15 +147,15 @@ def lay_vessel(spec: BodySpec) -> VesselLayout:
         highest_hz=spec.modes.solved_or_default_hz,
     )
     harmonics = max(3, harmonics_for(spec, rigidity, at, top))
-    spans = _spans(spec, shape, pieces, rigidity, top)
+    spans, asked = _spans(spec, shape, pieces, rigidity, top)
     per_harmonic = 2 * FIELDS * ORDER * len(spans)
     allowed = max(3, min(_MOST_HARMONICS, int(_BUDGET / per_harmonic) - 1))
     warnings: tuple[str, ...] = ()
-    if harmonics > allowed or len(spans) > _MOST_ELEMENTS:
-        reach = top * min(1.0, allowed / harmonics, _MOST_ELEMENTS / len(spans)) ** 2
+    if harmonics > allowed or asked > len(spans):
+        reach = top * min(1.0, allowed / harmonics, len(spans) / asked) ** 2
         warnings = (
             f"body {spec.name!r}: {min(allowed, harmonics)} waves round the axis and "
-            f"{min(_MOST_ELEMENTS, len(spans))} elements along the wall instead of the {harmonics} and {len(spans)} "
+            f"{len(spans)} elements along the wall instead of the {harmonics} and {asked} "
             f"that {top:.0f} Hz asks for; modes are resolved up to about {reach:.0f} Hz",
         )
         harmonics = min(allowed, harmonics)
@@ -186,30 +188,37 @@ def _marks(spec: BodySpec, shape: VesselShape, pieces: tuple[Piece, ...]) -> lis
 
 def _spans(
     spec: BodySpec, shape: VesselShape, pieces: tuple[Piece, ...], rigidity: Array, top: float
-) -> tuple[tuple[int, float, float], ...]:
+) -> tuple[tuple[tuple[int, float, float], ...], int]:
+    """Elements (piece, begin, end), and how many the waves ask for."""
     spans: list[tuple[int, float, float]] = []
     marks = _marks(spec, shape, pieces)
+    bent = _bent(pieces)
     for number, piece in enumerate(pieces):
-        inside = [p for which, p in marks if which == number] + _edges(piece)
+        inside = [p for which, p in marks if which == number] + _edges(piece, bent[number : number + 2])
         breaks = np.unique(np.clip(np.array([0.0, piece.end, *inside]), 0.0, piece.end))
         breaks = breaks[np.concatenate(([True], np.diff(breaks) > 1e-6 * piece.end))]
         breaks[-1] = piece.end
         for low, high in pairwise(breaks):
             ends = _ends(spec, piece, rigidity, top, (low, high))
             spans.extend((number, float(a), float(b)) for a, b in pairwise(ends))
-    return tuple(_thinned(spans, _MOST_ELEMENTS))
+    return tuple(_thinned(spans, _MOST_ELEMENTS)), len(spans)
 
 
-def _edges(piece: Piece) -> list[float]:
+def _bent(pieces: tuple[Piece, ...]) -> list[bool]:
+    """Whether each end of the pieces, from first to last, is an end of the wall or a corner that passes no twist on."""
+    ends = [course(piece, np.array([0.0, piece.end])).along for piece in pieces]
+    return [True, *(float(one[1] @ other[0]) < KINK for one, other in pairwise(ends)), True]
+
+
+def _edges(piece: Piece, bent: list[bool]) -> list[float]:
     """Marks off the free or bent ends of a piece, where the twisting moment dies away within a third of the wall."""
     ends = np.array([0.0, piece.end])
     at = course(piece, ends)
     steps = _EDGE * at.wall_m
-    return [
-        float(abs(end - step))
-        for end, step, radius in zip(ends, steps, at.place_m[:, 0], strict=True)
-        if radius > step and 3.0 * step < piece.end
-    ]
+    radius, slanted = at.place_m[:, 0], np.abs(at.along[:, 0]) < 1.0 - 1e-9
+    wanted = np.array(bent) & ((radius > steps) | ((radius == 0.0) & slanted))
+    wanted &= 3.0 * steps < piece.end
+    return [float(mark) for mark in np.abs(ends - steps)[wanted]]
 
 
 def _ends(spec: BodySpec, piece: Piece, rigidity: Array, top: float, reach: tuple[float, float]) -> Array:
@@ -256,6 +265,9 @@ def _number(
     reference = 0.5 * (1.0 + lobatto(ORDER))
     seen = [course(pieces[which], low + reference * (high - low)) for which, low, high in spans]
     nodes = Course(*(np.concatenate([getattr(at, key) for at in seen]) for key in Course.__dataclass_fields__))
+    size = float(np.linalg.norm(np.ptp(nodes.place_m, axis=0)))
+    closed = (bool(nodes.place_m[0, 0] < 1e-12 * size), bool(nodes.place_m[-1, 0] < 1e-12 * size))
+    nodes = _upright(nodes, closed)
     number = np.zeros((len(spans), ORDER + 1, FIELDS), dtype=np.int64)
     count = 0
     for e in range(len(spans)):
@@ -264,17 +276,29 @@ def _number(
             number[e, 0] = number[e - 1, -1]
             first = 1
             if float(np.linalg.norm(seen[e].along[0] - seen[e - 1].along[-1])) > _STRAIGHT:
-                # A corner passes on no twisting moment: the turn round the meridian is each side's own.
+                # At a corner the turn round the meridian is each side's own.
                 number[e, 0, 4] = count
                 count += 1
         rest = (ORDER + 1 - first) * FIELDS
         number[e, first:] = np.arange(count, count + rest).reshape(-1, FIELDS)
         count += rest
-    size = float(np.linalg.norm(np.ptp(nodes.place_m, axis=0)))
-    closed = (bool(nodes.place_m[0, 0] < 1e-12 * size), bool(nodes.place_m[-1, 0] < 1e-12 * size))
     return VesselLayout(
         pieces, spans, nodes, _arcs(pieces, spans), number, count, harmonics, closed, rigidity, warnings
     )
+
+
+def _upright(nodes: Course, closed: tuple[bool, bool]) -> Course:
+    """Let the fibres of the last element turn into the axis where a wall that is not quite flat meets it."""
+    along, outward = nodes.along.copy(), nodes.outward.copy()
+    share = 0.5 * (1.0 + lobatto(ORDER))[:, None]
+    for shut, part, side, away in zip(
+        closed, (slice(ORDER + 1), slice(-ORDER - 1, None)), (1.0, -1.0), (share, share[::-1]), strict=True
+    ):
+        if shut and abs(along[part][0 if side > 0.0 else -1, 0]) < 1.0 - 1e-9:
+            lean = (1.0 - away) * np.array([0.0, -side]) + away * outward[part]
+            outward[part] = lean / np.linalg.norm(lean, axis=1, keepdims=True)
+            along[part] = np.stack((-outward[part][:, 1], outward[part][:, 0]), axis=1)
+    return replace(nodes, along=along, outward=outward)
 
 
 def _arcs(pieces: tuple[Piece, ...], spans: tuple[tuple[int, float, float], ...]) -> Array:

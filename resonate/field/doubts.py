@@ -101,7 +101,7 @@ def face_doubts(body: Body, modes: ModeSet, air: Air, *, outward: Array, radius_
 
 
 def shell_doubts(body: Body, modes: ModeSet, air: Air, *, radius_m: float) -> tuple[Doubt, ...]:
-    """Where a vessel of half the extent ``radius_m`` is large against the wavelength; it is a first model below, too."""
+    """Where a vessel of half the extent ``radius_m`` is large against the wavelength."""
     heard = modes.frequency_hz[modes.swing : modes.heard]
     above_hz = SMALL * air.speed_m_s / (2.0 * np.pi * radius_m)
     return (Doubt("shell", body.name, int(np.sum(heard > above_hz)), len(heard), above_hz),) if len(heard) else ()

@@ -220,6 +220,16 @@ def test_no_locking_of_a_very_thin_bowl():
         assert np.all(drop < [0.35 * np.sqrt(share), 0.6 * np.sqrt(share), 0.85 * np.sqrt(share)])
 
 
+@pytest.mark.parametrize(("share", "facets", "rtol"), [(0.005, 32, 3e-3), (0.05, 8, 8e-3), (0.05, 24, 3e-3)])
+def test_many_straight_pieces_are_nearly_the_curve(share, facets, rtol):
+    # Chords of an arc miss it by 1/(8 facets^2) of a quarter turn's square: a facet of the length sqrt(radius wall) or
+    # less does not stiffen the wall. Solid rows as above.
+    found = families(vessel(bowl(0.1, 0.1, count=facets + 1), 0.1 * share), 40)
+    unit = share / 0.1 * np.sqrt(200e9 / (2.6 * 7850)) / (2 * np.pi)
+    for n, value in zip((2, 3, 4), BOWLS[share], strict=True):
+        np.testing.assert_allclose(found[n][0], value * unit, rtol=rtol)
+
+
 def test_order_of_convergence(monkeypatch):
     # Frequencies of elements of order p converge like size^(2 p) (Babuska & Osborn, Handbook of Numerical Analysis II
     # (1991), sec. 8), here with p = 8, until rounding: on a cone, whose form every mesh has exactly.
