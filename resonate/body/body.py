@@ -48,7 +48,7 @@ class Radiator:
     along body x, y, z). ``points_m`` (n, 3), ``normals`` (n, 3).
     """
 
-    kind: Literal["baffled", "dipoles"]
+    kind: Literal["baffled", "dipoles", "surface"]
     points_m: Array
     normals: Array
     weights: Array

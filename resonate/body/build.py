@@ -12,7 +12,9 @@ from resonate.body.flat import FlatBody
 from resonate.body.flat_layout import lay_flat
 from resonate.body.line import LineBody
 from resonate.body.line_layout import lay_line
-from resonate.scene.model import MembraneShape, PlateShape
+from resonate.body.vessel import VesselBody
+from resonate.body.vessel_layout import ORDER, lay_vessel
+from resonate.scene.model import MembraneShape, PlateShape, VesselShape
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -23,7 +25,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 # Raise when elements, energies or damping forms change, so that stored modes are made anew.
-VERSION = 7
+VERSION = 8
 
 
 def _up(spec: BodySpec) -> Array:
@@ -70,6 +72,11 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
     BodyError
         If the shape cannot be meshed or a support holds nothing of it.
     """
+    if isinstance(spec.shape, VesselShape):
+        wall = lay_vessel(spec)
+        shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
+        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
+        return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)
     layout = lay_flat(spec) if flat else lay_line(spec)
     mesh = (layout.grid.order, len(layout.grid.elements), len(layout.grid.nodes_m))

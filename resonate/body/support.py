@@ -190,6 +190,7 @@ def supports(
     weight_n: float,
     centre_m: Array,
     line: bool,
+    tied: csr_matrix | None = None,
 ) -> Supports:
     """Turn the supports of a scene into sparse forms.
 
@@ -205,10 +206,14 @@ def supports(
         (3,) mass centre.
     line : bool
         Whether the shape is a line (its guided ends keep two transverse motions).
+    tied : csr_matrix or None
+        (c, d) conditions ``tied @ u = 0`` of the shape itself.
     """
     size = body.freedoms
     unused = body.unused()
     fixed = [csr_matrix((np.ones(len(unused)), (np.arange(len(unused)), unused)), shape=(len(unused), size))]
+    if tied is not None:
+        fixed.append(tied)
     springs, dampers, damping = [], [], []
     hung: list[tuple[CordHold, Held]] = []
     places = [(hold, body.select(hold)) for hold in holds]

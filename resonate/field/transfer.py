@@ -1,6 +1,7 @@
 """What a microphone hears of each mode: the one interface between bodies and sound.
 
-Two honest first models stand behind it: flat faces in a baffle and compact dipoles along lines.
+Three honest first models stand behind it: flat faces in a baffle, compact dipoles along lines and simple sources
+on the outside of vessels.
 A transfer solved from equivalent sources fits behind the same interface.
 """
 
@@ -11,9 +12,10 @@ from typing import TYPE_CHECKING, Protocol
 import numpy as np
 
 from resonate.field.dipoles import DipoleLine
-from resonate.field.doubts import face_doubts, line_doubts
+from resonate.field.doubts import face_doubts, line_doubts, shell_doubts
 from resonate.field.rayleigh import BaffledFace
 from resonate.field.samples import motion_of, samples_of
+from resonate.field.shell import FreeShell
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -62,11 +64,14 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
     Returns
     -------
     Transfer
-        A baffled Rayleigh sum for skins and plates, compact dipoles for lines.
+        A baffled Rayleigh sum for skins and plates, compact dipoles for lines, simple sources for vessels.
     """
     samples, motion, radiator = samples_of(body, modes, air), motion_of(body, modes), body.radiator
     if radiator.kind == "dipoles":
         return DipoleLine(samples, motion, radiator.weights, line_doubts(body, modes, air))
     outward = np.einsum("ihn,ni->hn", motion, radiator.normals)
+    if radiator.kind == "surface":
+        doubts = shell_doubts(body, modes, air, radius_m=samples.radius_m)
+        return FreeShell(samples, outward, radiator.weights[:, 0], doubts)
     doubts = face_doubts(body, modes, air, outward=outward, radius_m=samples.radius_m)
     return BaffledFace(samples, outward, radiator.normals, radiator.weights[:, 0], doubts)

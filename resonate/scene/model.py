@@ -35,6 +35,7 @@ from resonate.scene.shapes import (
     StringShape,
     TubeShape,
 )
+from resonate.scene.vessel import LugSpec, VesselShape
 
 __all__ = [
     "BandSpec",
@@ -48,6 +49,7 @@ __all__ = [
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
+    "LugSpec",
     "MaterialSpec",
     "MembraneShape",
     "MicSpec",
@@ -71,6 +73,7 @@ __all__ = [
     "StringShape",
     "TakeSpec",
     "TubeShape",
+    "VesselShape",
     "WorldSpec",
 ]
 

@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from resonate.scene.kinds import Length, Part, number
 from resonate.scene.refused import RefusedError, shown
+from resonate.scene.vessel import VesselShape
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Mapping
@@ -326,7 +327,7 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | MembraneShape | PlateShape, Field(discriminator="kind")
+    BarShape | TubeShape | StringShape | MembraneShape | PlateShape | VesselShape, Field(discriminator="kind")
 ]
 
 SHAPES: Final[Mapping[str, type[Part]]] = {
@@ -335,6 +336,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "string": StringShape,
     "membrane": MembraneShape,
     "plate": PlateShape,
+    "vessel": VesselShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -344,7 +346,7 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "coil vessel sheet solid block ball cylinder lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "coil sheet solid block ball cylinder lumps assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
@@ -357,6 +359,8 @@ def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
     """Names that a support of this shape may use in ``where``."""
     if is_line(shape):
         return ("left", "right")
+    if isinstance(shape, VesselShape):
+        return ("rim", "base")
     outline = shape.outline
     if isinstance(outline, RectangleOutline):
         return ("x-", "x+", "z-", "z+", "edge")
@@ -371,6 +375,8 @@ def spot_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
     """Names that a strike on this shape may use as ``spot``; the first is the default."""
     if is_line(shape):
         return ("centre", "left", "right")
+    if isinstance(shape, VesselShape):
+        return ("rim", "base")
     if isinstance(shape.outline, RingOutline):
         return ("outer", "inner", "edge")
     return ("centre", "edge")

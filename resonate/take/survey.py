@@ -27,12 +27,13 @@ if TYPE_CHECKING:
     from resonate.body.body import Body
     from resonate.body.flat import FlatBody
     from resonate.body.line import LineBody
+    from resonate.body.vessel import VesselBody
     from resonate.modes.modeset import ModeSet
     from resonate.scene.model import BodySpec, MicSpec, Scene, StrikeSpec
     from resonate.scene.refused import Path
 
     Array = NDArray[np.float64]
-    Built = LineBody | FlatBody
+    Built = LineBody | FlatBody | VesselBody
 
 # A blow must lean into the surface by at least this sine; the run cannot tell less from none.
 _GRAZING: Final = 1e-6
