@@ -138,7 +138,11 @@ def _summary(path: Path) -> Iterable[str]:
     help=f"List this many modes of each body, from the lowest  [default: {_ROWS} in a table, all in JSON]",
 )
 def modes(scene: Path, *, as_json: bool, most: int | None) -> None:
-    """List the modes of every body of SCENE: frequency, decay, and what damps each."""
+    """List the modes of every body of SCENE.
+
+    Frequency, motion, decay, and what damps each mode. Lines move up (y of the body), across (z), along (x) or
+    twist; plates by bending or in-plane; membranes along their normal.
+    """
     from resonate.modes.store import default_store
     from resonate.scene.read import read_scene
     from resonate.take.make import solve_bodies
@@ -159,7 +163,9 @@ def modes(scene: Path, *, as_json: bool, most: int | None) -> None:
 
 
 def _listed(body: Body, solved: ModeSet, *, most: int | None) -> dict[str, Any]:
-    decay, t60 = solved.decay, solved.t60_s
+    from resonate.modes.kind import motions
+
+    decay, t60, motion = solved.decay, solved.t60_s, motions(body, solved)
     rows = []
     # Slow swinging on springs and cords is motion as a whole, not a mode.
     for number, index in enumerate(range(solved.swing, solved.count)[:most], 1):
@@ -168,6 +174,7 @@ def _listed(body: Body, solved: ModeSet, *, most: int | None) -> dict[str, Any]:
             {
                 "number": number,
                 "frequency_hz": float(solved.frequency_hz[index]),
+                "motion": motion[index],
                 "t60_s": float(t60[index]) if t60[index] < float("inf") else None,
                 "damping": {cause: float(getattr(decay, cause)[index]) for cause in causes},
             }
@@ -183,7 +190,7 @@ def _print_modes(body: Body, solved: ModeSet, *, most: int) -> None:
     title = f"{facts['name']}: {facts['mass_kg']:.4g} kg, {_many(count, 'mode')} ({heard} heard)"
     title += f", {_many(rigid, 'rigid motion')}" if rigid else ""
     title += f", {_many(solved.swing, 'swing')} on cords" if solved.swing else ""
-    table = Table("mode", "Hz", "T60 s", "material", "thermoelastic", "support", "radiation", title=title)
+    table = Table("mode", "Hz", "motion", "T60 s", "material", "thermal", "support", "radiation", title=title)
     for column in table.columns:
         column.justify = "right"
     for row in facts["modes"]:
@@ -191,7 +198,7 @@ def _print_modes(body: Body, solved: ModeSet, *, most: int) -> None:
         total = sum(row["damping"].values())
         # Rounding is not a cause.
         causes = [f"{value:.3g}" if value > 1e-9 * total else "0" for value in row["damping"].values()]
-        table.add_row(str(row["number"]), f"{row['frequency_hz']:.2f}", t60, *causes)
+        table.add_row(str(row["number"]), f"{row['frequency_hz']:.2f}", row["motion"], t60, *causes)
     table.caption = "damping as decay rates, 1/s: amplitudes fall as exp(-rate t)"
     _print_table(table)
     left = count - len(facts["modes"])
@@ -214,7 +221,10 @@ def _print_table(table: Any) -> None:  # noqa: ANN401 (rich is imported late)
 @click.argument("kind", required=False)
 @_JSON
 def presets(kind: str | None, *, as_json: bool) -> None:
-    """List what can be named in a scene: KIND is materials or strikers; all names without it."""
+    """List what a scene can name, of one KIND or all.
+
+    KIND is materials or strikers, told in a table; without it all names are listed.
+    """
     from rich.table import Table
 
     from resonate.scene.presets import list_presets, preset_rows, tables
@@ -242,7 +252,10 @@ def presets(kind: str | None, *, as_json: bool) -> None:
 @click.argument("name", type=click.Path(path_type=Path))
 @click.option("--from", "origin", metavar="EXAMPLE", help="Begin with a copy of an example, such as galley_rack.")
 def new(name: Path, origin: str | None) -> None:
-    """Write a commented scene NAME.toml to start from; an existing file is never touched."""
+    """Write a commented scene, NAME.toml, to start from.
+
+    An existing file is never touched.
+    """
     from resonate.scene.starter import write_starter
 
     click.echo(str(write_starter(name, origin=origin)))
@@ -253,7 +266,10 @@ def new(name: Path, origin: str | None) -> None:
 @_JSON
 @click.option("--again", is_flag=True, help="Run the scene again and lay its sound beside the take's.")
 def check(take: Path, *, as_json: bool, again: bool) -> None:
-    """Measure again what was written in TAKE: sync, levels, formats, ledger, hashes."""
+    """Measure again what was written in TAKE.
+
+    Sync, levels, formats, ledger and hashes. A line begins with ok, FAULT, or none where there is nothing to measure.
+    """
     from resonate.modes.store import default_store
     from resonate.take.check import check_take
 
@@ -275,7 +291,10 @@ def check(take: Path, *, as_json: bool, again: bool) -> None:
     help="Louder or quieter than the safe start; peaks stay limited.",
 )
 def play(what: Path, gain_db: float) -> None:
-    """Audition a take, or a scene, which is run without writing. Starts quiet and limits peaks."""
+    """Audition a take or a scene, quiet at first.
+
+    A scene is run without writing. Peaks are limited.
+    """
     from resonate.take.play import play_path
 
     with _telling() as tell:
@@ -286,16 +305,21 @@ def play(what: Path, gain_db: float) -> None:
 def _telling() -> Iterator[Callable[[str], None]]:
     """Progress on stderr: a live line on a terminal, only warnings otherwise."""
     if not sys.stderr.isatty():
-        yield lambda words: _warn(words) if words.startswith(_WARNING) else None
+        yield lambda words: click.echo(words, err=True) if words.startswith(_WARNING) else None
         return
     from rich.console import Console
 
-    with Console(stderr=True).status("reading") as status:
-        yield lambda words: _warn(words) if words.startswith(_WARNING) else status.update(words)
+    console = Console(stderr=True)
+    with console.status("reading") as status:
 
+        def tell(words: str) -> None:
+            if words.startswith(_WARNING):
+                # Above the live line, in the terminal's own width.
+                console.print(words, markup=False, highlight=False, soft_wrap=True)
+            else:
+                status.update(words)
 
-def _warn(words: str) -> None:
-    click.echo(words, err=True)
+        yield tell
 
 
 if __name__ == "__main__":

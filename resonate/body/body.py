@@ -49,7 +49,7 @@ class Radiator:
     along body x, y, z). ``points_m`` (n, 3), ``normals`` (n, 3).
     """
 
-    kind: Literal["baffled", "dipoles", "closed"]
+    kind: Literal["baffled", "dipoles", "surface", "closed"]
     points_m: Array
     normals: Array
     weights: Array

@@ -15,7 +15,17 @@ from resonate.body.line_layout import lay_line
 from resonate.body.solid import SolidBody
 from resonate.body.solid_layout import lay_solid
 from resonate.body.solid_mesh import lay_mesh
-from resonate.scene.model import BallShape, BlockShape, CylinderShape, MembraneShape, PlateShape, SolidShape
+from resonate.body.vessel import VesselBody
+from resonate.body.vessel_layout import ORDER, lay_vessel
+from resonate.scene.model import (
+    BallShape,
+    BlockShape,
+    CylinderShape,
+    MembraneShape,
+    PlateShape,
+    SolidShape,
+    VesselShape,
+)
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -26,7 +36,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 # Raise when elements, energies or damping forms change, so that stored modes are made anew.
-VERSION = 7
+VERSION = 8
 
 
 def _up(spec: BodySpec) -> Array:
@@ -77,6 +87,11 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
         solid = lay_mesh(spec) if isinstance(spec.shape, SolidShape) else lay_solid(spec)
         key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=solid.mesh)
         return SolidBody(spec, solid, key, temperature_k, gravity_m_s2, _up(spec))
+    if isinstance(spec.shape, VesselShape):
+        wall = lay_vessel(spec)
+        shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
+        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
+        return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)
     layout = lay_flat(spec) if flat else lay_line(spec)
     mesh = (layout.grid.order, len(layout.grid.elements), len(layout.grid.nodes_m))

@@ -199,6 +199,7 @@ def supports(
     centre_m: Array,
     line: bool,
     solid: bool = False,
+    tied: csr_matrix | None = None,
 ) -> Supports:
     """Turn the supports of a scene into sparse forms.
 
@@ -217,10 +218,14 @@ def supports(
     solid : bool
         Whether it is a solid: a face that is guided or sliding keeps its motion along itself, and a pinned one is
         held as firmly as a clamped one.
+    tied : csr_matrix or None
+        (c, d) conditions ``tied @ u = 0`` of the shape itself.
     """
     size = body.freedoms
     unused = body.unused()
     fixed = [csr_matrix((np.ones(len(unused)), (np.arange(len(unused)), unused)), shape=(len(unused), size))]
+    if tied is not None:
+        fixed.append(tied)
     springs, dampers, damping = [], [], []
     hung: list[tuple[CordHold, Held]] = []
     places = [(hold, body.select(hold)) for hold in holds]

@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 
 # Common practice: a slice is compact while wavenumber times half its thickness stays below one.
 COMPACT: Final = 1.0
+# Wavenumber times radius up to which simple sources on a sphere are right to a quarter of a decibel in its oval mode.
+SMALL: Final = 2.0
 # An edge that moves by less than this share of the face is held.
 _STILL: Final = 1e-3
 # Bodies named in one line.
@@ -31,6 +33,11 @@ _WORDS: Final = {
         "; edge-on and on the axis levels are wrong at every frequency",
     ),
     "closed": ("solids sound as simple sources without their own shadow, up to 6 dB too quiet: ", ""),
+    "shell": (
+        "vessels are heard as simple sources on their outside, without the air in them, and cast no shadow: levels "
+        "are good to some 5 dB, less ",
+        "",
+    ),
     "thick line": ("compact dipoles make high modes of lines too loud: ", ""),
 }
 
@@ -39,7 +46,7 @@ _WORDS: Final = {
 class Doubt:
     """One body at one limit of its model: ``count`` of its ``heard`` modes lie beyond ``limit_hz``."""
 
-    kind: Literal["free edge", "thick line", "closed"]
+    kind: Literal["free edge", "shell", "thick line", "closed"]
     body: str
     count: int
     heard: int
@@ -50,7 +57,9 @@ class Doubt:
         if self.kind == "closed":
             return f"{self.body!r} ({self.count} modes)"
         limit = f"{self.limit_hz:.0f} Hz ({self.count} of {self.heard} modes)"
-        return f"below {limit} on {self.body!r}" if self.kind == "free edge" else f"{self.body!r} above {limit}"
+        if self.kind == "thick line":
+            return f"{self.body!r} above {limit}"
+        return f"{'below' if self.kind == 'free edge' else 'above'} {limit} on {self.body!r}"
 
 
 def told(doubts: Sequence[Doubt]) -> tuple[str, ...]:
@@ -92,6 +101,13 @@ def face_doubts(body: Body, modes: ModeSet, air: Air, *, outward: Array, radius_
     below_hz = air.speed_m_s / (2.0 * np.pi * radius_m)
     hertz = modes.frequency_hz[modes.swing : modes.swing + heard]
     return (Doubt("free edge", body.name, int(np.sum(hertz < below_hz)), heard, below_hz),)
+
+
+def shell_doubts(body: Body, modes: ModeSet, air: Air, *, radius_m: float) -> tuple[Doubt, ...]:
+    """Where a vessel of half the extent ``radius_m`` is large against the wavelength."""
+    heard = modes.frequency_hz[modes.swing : modes.heard]
+    above_hz = SMALL * air.speed_m_s / (2.0 * np.pi * radius_m)
+    return (Doubt("shell", body.name, int(np.sum(heard > above_hz)), len(heard), above_hz),) if len(heard) else ()
 
 
 def line_doubts(body: Body, modes: ModeSet, air: Air) -> tuple[Doubt, ...]:

@@ -162,7 +162,7 @@ def near_m(body: Body) -> float:
     the line to the surface where that is more.
     """
     radiator = body.radiator
-    if radiator.kind in ("baffled", "closed"):
+    if radiator.kind != "dipoles":
         return float(np.sqrt(np.max(radiator.weights[:, 0])))
     steps = np.linalg.norm(np.diff(radiator.points_m, axis=0), axis=1)
     spacing = float(np.max(steps)) if len(steps) else 0.0

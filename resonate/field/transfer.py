@@ -1,6 +1,7 @@
 """What a microphone hears of each mode: the one interface between bodies and sound.
 
-Honest first models stand behind it: flat faces in a baffle, compact dipoles along lines, simple sources on solids.
+Honest first models stand behind it: flat faces in a baffle, compact dipoles along lines, simple sources on the
+outside of vessels and on solids.
 A transfer solved from equivalent sources fits behind the same interface.
 """
 
@@ -12,9 +13,10 @@ import numpy as np
 
 from resonate.field.closed import ClosedSurface
 from resonate.field.dipoles import DipoleLine
-from resonate.field.doubts import closed_doubts, face_doubts, line_doubts
+from resonate.field.doubts import closed_doubts, face_doubts, line_doubts, shell_doubts
 from resonate.field.rayleigh import BaffledFace
 from resonate.field.samples import motion_of, samples_of
+from resonate.field.shell import FreeShell
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -63,7 +65,7 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
     Returns
     -------
     Transfer
-        A baffled Rayleigh sum for skins and plates, compact dipoles for lines, simple sources for solids.
+        A baffled Rayleigh sum for skins and plates, compact dipoles for lines, simple sources for vessels and solids.
     """
     samples, motion, radiator = samples_of(body, modes, air), motion_of(body, modes), body.radiator
     if radiator.kind == "dipoles":
@@ -71,5 +73,8 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
     outward = np.einsum("ihn,ni->hn", motion, radiator.normals)
     if radiator.kind == "closed":
         return ClosedSurface(samples, outward, radiator.weights[:, 0], closed_doubts(body, modes))
+    if radiator.kind == "surface":
+        doubts = shell_doubts(body, modes, air, radius_m=samples.radius_m)
+        return FreeShell(samples, outward, radiator.weights[:, 0], doubts)
     doubts = face_doubts(body, modes, air, outward=outward, radius_m=samples.radius_m)
     return BaffledFace(samples, outward, radiator.normals, radiator.weights[:, 0], doubts)

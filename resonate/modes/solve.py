@@ -151,8 +151,9 @@ def _merge(pencil: Pencil, parts: tuple[Pencil, ...], *, most: int, top: float, 
     """Solve the parts one after the other; later ones need only reach what earlier ones left open."""
     spectra: list[Spectrum] = []
     limit, beyond = top, np.inf
-    for part in parts:
-        spectra.append(lowest(part, most=most, top=limit, free=free))
+    for number, part in enumerate(parts):
+        twin = number > 0 and _same(part, parts[number - 1])
+        spectra.append(spectra[-1] if twin else lowest(part, most=most, top=limit, free=free))
         values = np.sort(np.concatenate([spectrum.value for spectrum in spectra]))
         beyond = min(beyond, spectra[-1].beyond)
         limit = min(limit, beyond, float(values[most - 1]) if len(values) >= most else np.inf)
@@ -172,6 +173,17 @@ def _merge(pencil: Pencil, parts: tuple[Pencil, ...], *, most: int, top: float, 
         residual=np.concatenate([spectrum.residual for spectrum in spectra])[order],
         beyond=beyond,
         proved=all(spectrum.proved for spectrum in spectra),
+    )
+
+
+def _same(one: Pencil, other: Pencil) -> bool:
+    """Whether two parts are equal number by number, as the two of a round body are."""
+    return all(
+        left.nnz == right.nnz
+        and np.array_equal(left.indptr, right.indptr)
+        and np.array_equal(left.indices, right.indices)
+        and np.array_equal(left.data, right.data)
+        for left, right in ((one.stiffness, other.stiffness), (one.mass, other.mass))
     )
 
 

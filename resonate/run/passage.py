@@ -105,8 +105,10 @@ class _Run:
         # Without friction a contact pushes along the normal, and only that part of the speed closes it.
         axis, steep = blow.inward, float(blow.way(to_body) @ blow.inward)
         if steep <= 1e-6:  # noqa: PLR2004 (grazing)
+            lean = float(np.degrees(np.arcsin(np.clip(steep, -1.0, 1.0))))
+            way = "only grazes the surface" if abs(steep) < 1e-3 else "points away from the surface"  # noqa: PLR2004
             raise RunError(
-                what="its direction points away from the surface at the spot",
+                what=f"its direction {way} at the spot ({lean:.2g} deg into it)",
                 where=self._where(blow),
                 fix="turn it round, or leave it out to strike along the inward normal",
             )

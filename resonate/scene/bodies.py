@@ -82,14 +82,20 @@ class FixHold(Part):
 
 
 class SpringHold(Part):
-    """``hold = {spring = k, damper = c}``: springs to the world along x, y and z, N/m and N s/m."""
+    """``hold = {spring = k, damper = c}``: springs to the world along x, y and z, N/m and N s/m, or one of both."""
 
-    stiffness_n_m: Annotated[float, BeforeValidator(number("stiffness", above=0.0))] = Field(
-        validation_alias="spring"
+    stiffness_n_m: Annotated[float, BeforeValidator(number("stiffness", least=0.0))] = Field(
+        validation_alias="spring", default=0.0
     )
     damping_ns_m: Annotated[float, BeforeValidator(number("damping", least=0.0))] = Field(
         validation_alias="damper", default=0.0
     )
+
+    @model_validator(mode="after")
+    def _something(self) -> SpringHold:
+        if self.stiffness_n_m == self.damping_ns_m == 0.0:
+            raise RefusedError("a spring of 0 without a damper holds nothing", "give a spring, a damper, or both")
+        return self
 
 
 class CordHold(Part):

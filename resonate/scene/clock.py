@@ -203,13 +203,18 @@ class Clock:
 
     @property
     def first_frame(self) -> int:
-        """The number of delivered frame 0, counted as ``start_frame`` is."""
+        """The number of delivered frame 0, counted as ``start_frame`` is; below 0 with handles before midnight."""
         return self.start_frame - self.handles
 
     @property
     def frame_count(self) -> int:
         """Delivered frames: handles, the frames of the length (a part counts whole), handles."""
         return 2 * self.handles + math.ceil(self.length * self.frame.fraction)
+
+    @property
+    def begins_the_day_before(self) -> bool:
+        """Whether handles reach back across midnight."""
+        return self.first_frame < 0
 
     @property
     def begin(self) -> Fraction:
@@ -261,7 +266,9 @@ class Clock:
 
     @property
     def _reference(self) -> Fraction:
-        return self.first_frame / self.frame.fraction * self.sample_rate
+        # Labels wrap at midnight, and so does the count of samples since then.
+        first = self.first_frame if self.numbered else self.first_frame % self.frame.day_frames
+        return first / self.frame.fraction * self.sample_rate
 
     def label(self, frame: int) -> int:
         """Return the number shown for a delivered frame: its own, or the count from 0 with timecode."""

@@ -27,6 +27,7 @@ _EXAMPLES: Final = {
     "outer": '"25 mm"',
     "wall": '"1.5 mm"',
     "tension": '"80 N" (a string) or "2 kN/m" (a membrane)',
+    "profile": '[[0, 0], ["40 mm", 0], ["40 mm", "90 mm"]]',
     "outline": '{rectangle = ["0.4 m", "0.3 m"]}',
     "thickness": '"3 mm"',
     "name": '"pan"',

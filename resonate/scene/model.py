@@ -36,6 +36,7 @@ from resonate.scene.shapes import (
     TubeShape,
 )
 from resonate.scene.solids import BallShape, BlockShape, CylinderShape, SolidShape
+from resonate.scene.vessel import LugSpec, VesselShape
 
 __all__ = [
     "BallShape",
@@ -52,6 +53,7 @@ __all__ = [
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
+    "LugSpec",
     "MaterialSpec",
     "MembraneShape",
     "MicSpec",
@@ -76,6 +78,7 @@ __all__ = [
     "StringShape",
     "TakeSpec",
     "TubeShape",
+    "VesselShape",
     "WorldSpec",
 ]
 

@@ -54,6 +54,8 @@ def _label_time(text: str, picture: Picture | None) -> Fraction:
     frames = frame_of(text, picture.rate) - picture.start_frame
     if frames < -day // 2:  # past midnight
         frames += day
+    elif frames > day // 2:  # before midnight, in handles
+        frames -= day
     return frames / picture.rate.fraction
 
 

@@ -12,6 +12,7 @@ from pydantic import BaseModel
 
 from resonate.scene.happenings import MicSpec
 from resonate.scene.shapes import PolygonOutline, is_line, is_solid
+from resonate.scene.vessel import VesselShape
 
 if TYPE_CHECKING:
     from resonate.scene.bodies import BodySpec
@@ -43,6 +44,9 @@ def _middle(shape: Any) -> Triple:  # noqa: ANN401 (any member of the union)
         return 0.5 * shape.length_m, 0.0, 0.0
     if is_solid(shape):
         return 0.0, 0.0, 0.0
+    if isinstance(shape, VesselShape):
+        heights = [row[1] for row in shape.profile_m]
+        return 0.0, 0.5 * (min(heights) + max(heights)), 0.0
     if isinstance(shape.outline, PolygonOutline):
         x, z = ([corner[axis] for corner in shape.outline.corners_m] for axis in (0, 1))
         return 0.5 * (min(x) + max(x)), 0.0, 0.5 * (min(z) + max(z))

@@ -98,12 +98,14 @@ class PictureSpec(Part):
     @model_validator(mode="after")
     def _starts(self) -> PictureSpec:
         try:
-            frame, _ = read_start(self.start, self.rate)
+            frame, numbered = read_start(self.start, self.rate)
         except RefusedError as error:
             raise RefusedError(error.what, error.fix, at=("start",)) from error
-        if frame < self.handles:
+        # Labels go on before midnight with those of the day before; numbers do not go on below 0.
+        if self.handles > (frame if numbered else self.rate.day_frames):
+            limit = "frame 0" if numbered else "the day before"
             raise RefusedError(
-                f"{self.handles} handles before {shown(self.start)} begin before frame 0",
+                f"{self.handles} handles before {shown(self.start)} begin before {limit}",
                 "start later or take fewer handles",
                 at=("handles",),
             )

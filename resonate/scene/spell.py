@@ -322,6 +322,7 @@ def _read_hold(value: object, path: Path, faults: Faults) -> Hold | None:
             ("fix", FixHold),
             ("cord", CordHold),
             ("spring", SpringHold),
+            ("damper", SpringHold),
         )
         for key, model in models:
             if key in value:

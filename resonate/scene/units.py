@@ -57,7 +57,7 @@ UNITS: Final[Mapping[str, Mapping[str, Fraction]]] = {
         "g/cm3": Fraction(1000),
     },
     "tension": _TENSION,
-    "stiffness": _TENSION,
+    "stiffness": _TENSION | {"MN/m": Fraction(1_000_000)},
     "damping": {"N s/m": Fraction(1), "N*s/m": Fraction(1), "Ns/m": Fraction(1)},
     "temperature": {"K": Fraction(1), "degC": Fraction(1)},
     "level": {"dB": Fraction(1)},

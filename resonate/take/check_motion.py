@@ -66,8 +66,9 @@ class Frames:
 
     @property
     def reference(self) -> Fraction:
-        """Exact samples from midnight to sample 0."""
-        return Fraction(self.first * self.sample_rate) / self.rate
+        """Exact samples from midnight to sample 0; handles may reach back into the day before."""
+        first = self.first if self.numbered else self.first % self.day
+        return Fraction(first * self.sample_rate) / self.rate
 
     def frame_of(self, label: str) -> int:
         """Frames from midnight to a timecode label (SMPTE ST 12-1), the inverse of what the writer does."""

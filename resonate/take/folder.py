@@ -2,7 +2,7 @@
 
 It is built in ``NAME.partial-DIGEST`` beside its place, written through to the disk and then renamed. While a
 run builds, it holds a lock on that folder (where the system locks folders); one that nobody
-holds was left by a killed run and is removed by the next.
+holds was left by a killed run and is removed by the next into the same folder of takes, whatever its title.
 """
 
 from __future__ import annotations
@@ -33,6 +33,7 @@ _UNSAFE: Final = re.compile(r'[<>:"/\\|?*\x00-\x1f\x7f]')
 _DEVICES: Final = re.compile(
     r"(con|prn|aux|nul|conin\$|conout\$|com[0-9¹²³]|lpt[0-9¹²³])( *)(\..*)?", re.IGNORECASE
 )
+_LEFTOVER: Final = re.compile(rf"(.+)\.(partial|old)-[0-9a-z]{{{_DIGEST_LENGTH}}}")
 _FULL: Final = (errno.ENOSPC, errno.EDQUOT)
 
 
@@ -115,23 +116,37 @@ def building(out: Path, name: str, *, digest: str, replace: bool) -> Iterator[Bu
 
 
 def tidy(out: Path, name: str) -> None:
-    """Remove what killed runs of this take left beside it, and put a take back that was half swapped."""
-    pattern = re.compile(re.escape(name) + rf"\.(partial|old)-[0-9a-z]{{{_DIGEST_LENGTH}}}")
+    """Remove what killed runs left in a folder of takes, and put takes back that were half swapped.
+
+    What belongs to takes of another name goes only where its lock proves that nobody builds it any more.
+    """
     for entry in sorted(out.iterdir()):
-        found = pattern.fullmatch(entry.name)
+        found = _LEFTOVER.fullmatch(entry.name)
         if found is None or entry.is_symlink() or not entry.is_dir():
             continue
-        if found.group(1) == "old" and not (out / name).exists():
-            entry.rename(out / name)
+        whose, ours = found.group(1), found.group(1) == name
+        if not ours and not _holds_only(entry, whose):
             continue
-        lock = _try_lock(entry)
+        lock = _try_lock(entry, sure=not ours)
         if lock is None:
             continue
         try:
-            if _is_same(entry, lock):
+            if not _is_same(entry, lock):
+                continue
+            if found.group(2) == "old" and not (out / whose).exists():
+                entry.rename(out / whose)
+            else:
                 shutil.rmtree(entry, ignore_errors=True)
         finally:
             _let_go(lock)
+
+
+def _holds_only(folder: Path, name: str) -> bool:
+    try:
+        return all(part.name.startswith(f"{name}.") and part.is_file() for part in folder.iterdir())
+    except OSError:
+        # It vanished, or is nobody's business.
+        return False
 
 
 def _make_folders(out: Path) -> list[Path]:
@@ -195,10 +210,13 @@ def _claim(partial: Path) -> int:
     )
 
 
-def _try_lock(folder: Path) -> int | None:
-    """Lock a folder and give its descriptor; None if it is held or gone, -1 where folders have no locks."""
+def _try_lock(folder: Path, *, sure: bool = False) -> int | None:
+    """Lock a folder and give its descriptor; None if it is held or gone, -1 where folders have no locks.
+
+    With ``sure`` it is None as well where nothing can be locked.
+    """
     if sys.platform == "win32":
-        return -1
+        return None if sure else -1
     import fcntl
 
     try:
@@ -212,7 +230,10 @@ def _try_lock(folder: Path) -> int | None:
         return None
     except OSError:
         # Some network file systems lock nothing; building still works, one run at a time.
-        return descriptor
+        if not sure:
+            return descriptor
+        os.close(descriptor)
+        return None
     return descriptor
 
 

@@ -106,6 +106,7 @@ def solve_bodies(bodies: Sequence[Body], *, store: ModeStore | None, progress: P
     """Find the modes of bodies in their order; those that are alike are solved once."""
     from resonate.modes.solve import solve_modes, solved_hz
     from resonate.modes.store import modes_key
+    from resonate.take.survey import check_dampers
 
     modes: list[ModeSet] = []
     known: dict[str, ModeSet] = {}
@@ -114,6 +115,7 @@ def solve_bodies(bodies: Sequence[Body], *, store: ModeStore | None, progress: P
         key = modes_key(body, solved_hz=solved_hz(body))
         if key not in known:
             known[key] = solve_modes(body, store=store)
+            check_dampers(body, known[key])
         modes.append(_renamed(known[key], body.name))
     return tuple(modes)
 
@@ -137,7 +139,7 @@ def _write_files(
 
     record = ran.record
     path = {kind: place.file(ENDINGS[kind]) for kind in scene.take.files}
-    warnings = [*_notes(ran.modes, store), *record.warnings]
+    warnings = [*_midnight(scene), *_notes(ran.modes, store), *record.warnings]
     heard = None
     if "wav" in path:
         progress("sound")
@@ -179,6 +181,16 @@ def transfers_of(scene: Scene, ran: Ran) -> list[Transfer]:
 
     air = Air.of(scene.world)
     return [transfer_for(body, found, air) for body, found in zip(ran.bodies, ran.modes, strict=True)]
+
+
+def _midnight(scene: Scene) -> list[str]:
+    clock = scene.clock
+    if not clock.begins_the_day_before:
+        return []
+    return [
+        f"the handles reach back across midnight: frame 0 is {clock.timecode(0)}, and TimeReference counts from "
+        "the midnight before"
+    ]
 
 
 def _notes(modes: Sequence[ModeSet], store: ModeStore | None) -> list[str]:

@@ -8,7 +8,7 @@ from __future__ import annotations
 import math
 import re
 from contextlib import contextmanager
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Final, cast
 
 import numpy as np
 
@@ -24,16 +24,21 @@ if TYPE_CHECKING:
 
     from numpy.typing import NDArray
 
+    from resonate.body.body import Body
     from resonate.body.flat import FlatBody
     from resonate.body.line import LineBody
+    from resonate.body.vessel import VesselBody
+    from resonate.modes.modeset import ModeSet
     from resonate.scene.model import BodySpec, MicSpec, Scene, StrikeSpec
     from resonate.scene.refused import Path
 
     Array = NDArray[np.float64]
-    Built = LineBody | FlatBody
+    Built = LineBody | FlatBody | VesselBody
 
 # A blow must lean into the surface by at least this sine; the run cannot tell less from none.
 _GRAZING: Final = 1e-6
+# A damper that moves by less than this share of the fastest point is at rest: very soft springs blur the difference.
+_AT_REST: Final = 1e-3
 _STRIKE: Final = re.compile(r"strike\[(\d+)\].*")
 _BODY: Final = re.compile(r"body '([^']*)'")
 
@@ -93,10 +98,11 @@ def _build(spec: BodySpec, place: int, scene: Scene, found: _Found) -> Built | N
     path: Path = ("body", place)
     world = scene.world
     try:
-        body: Built = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)  # type: ignore[assignment]
+        built = build_body(spec, temperature_k=world.temperature_k, gravity_m_s2=world.gravity_m_s2)
     except BodyError as error:
         found.refuse(path, error)
         return None
+    body = cast("Built", built)
     for number, hold in enumerate(spec.support):
         try:
             body.select(hold)
@@ -158,6 +164,26 @@ def _check_mic(mic: MicSpec, place: int, body: Built, found: _Found) -> None:
             what=f"the microphone is {nearest:.4g} m from the middle of {body.name!r}; closer than {least:.4g} m it "
             "cannot be served",
             fix=f"move it at least {least:.2g} m away from the body",
+        )
+
+
+def check_dampers(body: Body, modes: ModeSet) -> None:
+    """See that no damper would have to slow a body as a whole: the run slows vibration alone.
+
+    Raises
+    ------
+    BodyError
+        If a damper is moved by a motion that nothing holds.
+    """
+    rows = getattr(body, "supports", None)
+    if rows is None or not rows.damper_rows.shape[0] or not modes.rigid.shape[1]:
+        return
+    moved = float(np.max(np.abs(rows.damper_rows @ modes.rigid)))
+    if moved > _AT_REST * float(np.max(np.abs(modes.rigid))):
+        raise BodyError(
+            what="a damper alone does not keep the body in place, and its drift as a whole would not be slowed",
+            where=f"body {body.name!r}",
+            fix='give it a spring as well, such as {spring = "10 kN/m", damper = 2}, or hold the body elsewhere',
         )
 
 

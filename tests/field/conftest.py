@@ -87,4 +87,6 @@ def line(points, volumes, motion, wavenumber_1_m, **how):
 @pytest.fixture
 def air_model():
     """The builders of this file, for tests that cannot import it."""
-    return SimpleNamespace(air=AIR, disc=disc, face=face, line=line)
+    return SimpleNamespace(
+        air=AIR, disc=disc, face=face, line=line, body_of=body_of, modes_at=modes_at, transfer_for=transfer_for
+    )

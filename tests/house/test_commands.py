@@ -55,9 +55,39 @@ def test_help_loads_nothing_but_the_standard_library_and_click(shell, words):
     assert loaded - sys.stdlib_module_names == {"click", "resonate"} | (loaded & {"colorama"})
 
 
-def test_help_names_every_command(shell):
-    text = shell.run("--help").out
+def test_help_names_every_command_on_one_whole_line_of_a_narrow_terminal(shell):
+    text = shell.run("--help", environment={"COLUMNS": "80"}).out
     assert all(f"\n  {name} " in text for name in COMMANDS)
+    assert "..." not in text.partition("Commands:")[2]
+    for name in COMMANDS:
+        told = shell.run(name, "--help", environment={"COLUMNS": "80"}).out
+        assert max(map(len, told.splitlines())) <= 80
+
+
+def test_modes_say_in_which_way_they_move(shell, small):
+    # A free bar of 20 x 4 mm: bending over the thin side is 5 times lower than over the wide one, and frequencies of
+    # stretching are n c / 2 L with c = sqrt(E / rho) (any text on vibration). Steel, 200 mm: E = 2.1e11, 7850.
+    text = small.read_text(encoding="utf-8").replace('heard = "6 kHz", solved = "12 kHz", most = 20', 'heard = "20 kHz"')
+    small.write_text(text, encoding="utf-8")
+    for _ in range(2):  # solved, then from the store
+        (body,) = json.loads(shell.run("modes", small.name, "--json").out)["bodies"]
+        by_motion = {}
+        for mode in body["modes"]:
+            by_motion.setdefault(mode["motion"], []).append(mode["frequency_hz"])
+        assert set(by_motion) == {"up", "across", "along", "twist"}
+        assert by_motion["across"][0] == pytest.approx(5.0 * by_motion["up"][0], rel=0.05)
+        assert by_motion["along"][0] == pytest.approx(math.sqrt(2.1e11 / 7850) / 0.4, rel=5e-3)
+    shown = shell.run("modes", small.name).out
+    assert " twist " in shown
+    assert "6 rigid motions" in shown
+
+
+def test_what_is_one_is_not_called_many(shell, small):
+    # A bar that is hinged at one end about one axis swings, and does nothing else as a whole.
+    hinge = 'support = [{where = "left", hold = {fix = ["x", "y", "z", "rx", "ry"]}}]'
+    text = small.read_text(encoding="utf-8").replace("floating = true", hinge)
+    small.write_text(text, encoding="utf-8")
+    assert "1 rigid motion\n" in shell.run("modes", small.name).out.replace("  ", "\n")
 
 
 def test_importing_the_package_loads_nothing_heavy(shell):
@@ -109,7 +139,7 @@ def test_modes_as_json_are_what_is_promised(shell, small):
     assert body["mass_kg"] == pytest.approx(0.1256, rel=2e-3)
     assert len(body["modes"]) > 8
     for number, mode in enumerate(body["modes"], 1):
-        assert list(mode) == ["number", "frequency_hz", "t60_s", "damping"]
+        assert list(mode) == ["number", "frequency_hz", "motion", "t60_s", "damping"]
         assert mode["number"] == number
         assert list(mode["damping"]) == DAMPING
         assert all(rate >= 0.0 for rate in mode["damping"].values())
@@ -189,6 +219,14 @@ def test_new_writes_a_scene_that_runs(shell):
     assert shell.run("take", "quay.toml").code == 0
     assert shell.run("check", "quay").code == 0
     assert shell.run("new", "nowhere/quay").code == 2
+
+
+@pytest.mark.parametrize("name", ["", ".", "..", "stores/.."])
+def test_new_refuses_what_names_no_file(shell, name):
+    outcome = shell.run("new", name)
+    assert outcome.code == 2
+    assert "names no file" in outcome.err
+    assert list(shell.folder.rglob("*")) == []
 
 
 @pytest.mark.parametrize("name", ['my "quay"', "quay.toml", "a{b}c", "50 % off"])
@@ -309,6 +347,33 @@ def test_a_reader_that_leaves_early_is_no_error(shell):
     process.stdout.close()
     _, err = process.communicate(timeout=60)
     assert (process.returncode, err) == (0, b"")
+
+
+@pytest.mark.skipif(os.name == "nt", reason="no such terminals there")
+def test_warnings_do_not_run_into_the_live_line_of_a_terminal(shell, root):
+    import pty
+
+    ours, theirs = pty.openpty()
+    process = subprocess.Popen(
+        shell.command("modes", root / "examples" / "landing_boards.toml", "--most", "1"),
+        stdout=subprocess.PIPE, stderr=theirs, cwd=shell.folder, env=shell.environment | {"TERM": "xterm"},
+    )  # fmt: skip
+    os.close(theirs)
+    said = b""
+    with os.fdopen(ours, "rb", buffering=0) as terminal, process.stdout:
+        while True:
+            try:
+                part = terminal.read(4096)
+            except OSError:  # how some systems tell that the other end is closed
+                break
+            if not part:
+                break
+            said += part
+        process.stdout.read()
+    assert process.wait() == 0
+    assert b"warning: " in said
+    # Each begins where the live line was taken away.
+    assert said.count(b"\x1b[2Kwarning: ") + said.count(b"\nwarning: ") == said.count(b"warning: ")
 
 
 @pytest.mark.skipif(os.name == "nt", reason="signals are another matter there")

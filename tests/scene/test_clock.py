@@ -10,6 +10,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from resonate.scene.clock import Clock, FrameRate, frame_of, label_of, read_start
+from resonate.scene.moments import Picture, read_moment
 from resonate.scene.refused import RefusedError
 
 DROP = FrameRate.read("30000/1001 drop")
@@ -208,6 +209,10 @@ def test_the_run_begins_20_ms_earlier():
         ("30000/1001 drop", "01:00:00;00", 0, 44100, Fraction(107892 * 1001, 30000) * 44100),
         ("30000/1001 drop", "00:00:00;01", 0, 48000, Fraction(8008, 5)),
         (24, 1001, 8, 48000, Fraction(993, 24) * 48000),
+        # Handles before midnight: from the midnight before. A day of 30 drop-frame labels is 2589408 frames
+        # (SMPTE ST 12-1: 108000 an hour less 2 in 9 of 10 minutes).
+        (24, "00:00:00:00", 8, 48000, Fraction(24 * 86400 - 8, 24) * 48000),
+        ("30000/1001 drop", "00:00:00;05", 8, 48000, Fraction((2589408 - 3) * 1001, 30000) * 48000),
     ],
 )
 def test_time_reference(rate, start, handles, sample_rate, expected):
@@ -225,6 +230,24 @@ def test_timecode_of_delivered_frames():
         "00:01:00;03",
     ]
     assert clock(25, start="23:59:59:24", length="1").timecode(1) == "00:00:00:00"
+
+
+def test_handles_may_reach_back_across_midnight():
+    ticking = clock(24, start="00:00:00:00", handles=8, length="1")
+    assert ticking.begins_the_day_before
+    assert [ticking.timecode(k) for k in (0, 7, 8)] == ["23:59:59:16", "23:59:59:23", "00:00:00:00"]
+    assert [ticking.label(k) for k in (0, 8)] == [0, 8]
+    assert not clock(24, start="00:00:00:08", handles=8, length="1").begins_the_day_before
+
+
+@pytest.mark.parametrize(
+    ("start", "moment", "frames"),
+    [("00:00:00:00", "23:59:59:20", -4), ("23:59:59:20", "00:00:00:02", 6), ("01:00:00:00", "00:59:59:23", -1)],
+)
+def test_labels_across_midnight_are_near(start, moment, frames):
+    rate = FrameRate.read(24)
+    picture = Picture(rate=rate, start_frame=frame_of(start, rate), numbered=False)
+    assert read_moment(moment, picture) * 24 == frames
 
 
 @given(

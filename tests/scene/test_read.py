@@ -264,6 +264,27 @@ def test_level():
     assert (level.kind, level.db) == ("peak", -6.0)
 
 
+@pytest.mark.parametrize(
+    ("hold", "spring", "damper"),
+    [
+        ("{damper = '3 N s/m'}", 0.0, 3.0),
+        ("{spring = 0, damper = 3}", 0.0, 3.0),
+        ("{spring = '1.5 MN/m'}", 1.5e6, 0.0),
+        ("{spring = '2 N/mm'}", 2e3, 0.0),
+    ],
+)
+def test_a_spring_or_a_damper_may_stand_alone(hold, spring, damper):
+    tail = f"shape = 'bar'\nlength = 1\ndiameter = 0.02\nsupport = {{where = 'left', hold = {hold}}}\n"
+    (entry,) = parse_scene(HEAD + tail).bodies[0].support
+    assert (entry.hold.stiffness_n_m, entry.hold.damping_ns_m) == (spring, damper)
+
+
+@pytest.mark.parametrize("name", ["bell rod", "7 of 9", "Bo\u00eete_2-b", "\u092c\u093e\u0932\u091f\u0940", "\u9b5a"])
+def test_names_are_of_any_script(name):
+    text = HEAD.replace("pan", name) + "shape = 'bar'\nlength = 1\ndiameter = 0.02\n"
+    assert parse_scene(text).bodies[0].name == name
+
+
 def test_the_default_microphone_is_1_m_in_front():
     text = (
         HEAD

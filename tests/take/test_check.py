@@ -77,6 +77,15 @@ def test_a_good_take_of_another_kind_passes(kit, tmp_path, more):
     assert report.ok, "\n".join(map(str, report.findings))
 
 
+@pytest.mark.parametrize(("rate", "start"), [("24", "00:00:00:00"), ("30000/1001 drop", "00:00:00;05")])
+def test_a_take_whose_handles_begin_the_day_before_passes(kit, tmp_path, rate, start):
+    take = kit.take(tmp_path, scene=kit.scene(rate=rate, start=start))
+    report = check_take(take)
+    assert report.ok, "\n".join(map(str, report.findings))
+    with (take / CURVES).open(encoding="utf-8") as file:
+        assert next(csv.DictReader(file))["timecode"].startswith("23:59:59")
+
+
 def test_a_moved_and_renamed_take_passes(take, tmp_path):
     moved = tmp_path / "elsewhere" / "other name"
     moved.parent.mkdir()
