@@ -207,7 +207,9 @@ class Grid:
             element = column[rows]
             guess = self._invert(element, points_m[rows])
             miss = self._miss(element, guess, points_m[rows])
-            outside_it = np.flatnonzero(miss > enough) if self.dimension > 1 else every[:0]
+            # Points off a solid are next to it (a pressed patch on a round face): where Newton ends is good enough.
+            flat = self.dimension == 2  # noqa: PLR2004 (a flat region)
+            outside_it = np.flatnonzero(miss > enough) if flat else every[:0]
             if len(outside_it):
                 guess[outside_it] = self._rim(element[outside_it], points_m[rows[outside_it]])
                 miss[outside_it] = self._miss(element[outside_it], guess[outside_it], points_m[rows[outside_it]])
