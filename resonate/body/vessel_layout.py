@@ -34,6 +34,7 @@ _LAYERS = 6.0
 KINK = 0.7
 # Length of the element at a free edge, in walls.
 _EDGE = 2.5
+_LEAST = 4e-3
 # A curved element turns by half a right angle at the most, rad.
 _BEND = 0.25 * np.pi
 _MOST_ELEMENTS = 96
@@ -141,8 +142,15 @@ def lay_vessel(spec: BodySpec) -> VesselLayout:
     pieces = meridian(shape, spec.name)
     rigidity = plane_stress(spec.material)
     at, step = _stations(pieces)
+    ends = [course(pieces[0], np.zeros(1)), course(pieces[-1], np.array([pieces[-1].end]))]
+
+    def expected(hertz: float) -> float:
+        # Below the frequency at which it would breathe, an open vessel rings round its edges: a pair for each n.
+        waves = [end.place_m[0, 0] * _waves(spec.material, rigidity, end.wall_m, hertz)[0] for end in ends]
+        return max(_expected(spec.material, rigidity, at, step, hertz), 2.0 * float(sum(waves)))
+
     top = top_frequency(
-        lambda hertz: _expected(spec.material, rigidity, at, step, hertz),
+        expected,
         wanted=int(_MARGIN * spec.modes.most) + 8,
         highest_hz=spec.modes.solved_or_default_hz,
     )
@@ -214,7 +222,8 @@ def _edges(piece: Piece, bent: list[bool]) -> list[float]:
     """Marks off the free or bent ends of a piece, where the twisting moment dies away within a third of the wall."""
     ends = np.array([0.0, piece.end])
     at = course(piece, ends)
-    steps = _EDGE * at.wall_m
+    # In the thinnest walls the edge matters little, and short elements are stiff enough to drown the first modes.
+    steps = np.maximum(_EDGE * at.wall_m, _LEAST * piece.end)
     radius, slanted = at.place_m[:, 0], np.abs(at.along[:, 0]) < 1.0 - 1e-9
     wanted = np.array(bent) & ((radius > steps) | ((radius == 0.0) & slanted))
     wanted &= 3.0 * steps < piece.end
