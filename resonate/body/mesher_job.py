@@ -45,14 +45,15 @@ def _fill_clean(points: Array, triangles: IntArray, size: float) -> tuple[Array,
 
 def _fill_any(points: Array, triangles: IntArray, size: float) -> tuple[Array, IntArray]:
     """FTetWild: robust, slow, another mesh every time (so that what it made is kept)."""
+    import importlib
     import types
 
     # It asks for a viewer that it does not use.
     sys.modules.setdefault("pyvista", types.ModuleType("pyvista"))
-    import pytetwild
+    mesher = importlib.import_module("pytetwild")
 
     diagonal = float(np.linalg.norm(np.ptp(points, axis=0)))
-    nodes, cells = pytetwild.tetrahedralize(
+    nodes, cells = mesher.tetrahedralize(
         points, triangles.astype(np.int32), edge_length_fac=min(size / diagonal, 0.2), optimize=True
     )
     return np.asarray(nodes, dtype=np.float64), np.asarray(cells, dtype=np.int64)

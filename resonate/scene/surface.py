@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -112,7 +112,7 @@ def _read(path: Path, ending: str) -> tuple[Array, IntArray]:
     try:
         import trimesh
 
-        mesh = trimesh.load(path, force="mesh", process=False)
+        mesh: Any = trimesh.load(path, force="mesh", process=False)
         points = np.array(mesh.vertices, dtype=np.float64)
         triangles = np.array(mesh.faces, dtype=np.int64)
     except ImportError as error:
