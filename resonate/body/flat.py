@@ -15,6 +15,7 @@ import numpy as np
 from scipy.sparse import coo_matrix, csr_matrix
 
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.display import join, quad_triangles
 from resonate.body.energy import Strain, assemble, sample
 from resonate.body.flat_layout import SHEAR, FlatLayout
@@ -30,7 +31,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.body.outline import Edge
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -69,7 +70,7 @@ def _blocks(*parts: Array) -> Array:
 
 
 @dataclass(frozen=True)
-class FlatBody:
+class FlatBody(Described):
     """A plate or membrane; satisfies ``Body``. Parameters as for lines, with a flat layout."""
 
     spec: BodySpec
@@ -78,11 +79,6 @@ class FlatBody:
     temperature_k: float
     gravity_m_s2: float
     up: Array
-
-    @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
 
     @property
     def is_skin(self) -> bool:
@@ -108,31 +104,6 @@ class FlatBody:
     def freedoms(self) -> int:
         """Fields times nodes."""
         return len(self.grid.nodes_m) * self.fields
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Material loss factor."""
-        return self.spec.material.loss
-
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What a person should know."""
-        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:

@@ -15,6 +15,7 @@ import numpy as np
 from scipy.sparse import coo_matrix, csr_matrix
 
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.display import join, lattice
 from resonate.body.energy import Strain, assemble, sample
 from resonate.body.heat import Heat
@@ -30,7 +31,7 @@ if TYPE_CHECKING:
 
     from resonate.body.line_layout import Layout
     from resonate.body.section import Section
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -63,7 +64,7 @@ def _diagonal(*entries: Array) -> Array:
 
 
 @dataclass(frozen=True)
-class LineBody:
+class LineBody(Described):
     """A line body; satisfies ``Body``.
 
     Parameters
@@ -89,11 +90,6 @@ class LineBody:
     family: Literal["line", "skin", "wall"] = "line"
 
     @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
-
-    @property
     def grid(self) -> Grid:
         """Elements along x."""
         return self.layout.grid
@@ -102,31 +98,6 @@ class LineBody:
     def freedoms(self) -> int:
         """Six for each node."""
         return len(self.grid.nodes_m) * FIELDS
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Material loss factor."""
-        return self.spec.material.loss
-
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What a person should know."""
-        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:

@@ -58,8 +58,9 @@ def fill(points_m: Array, triangles: IntArray, *, size_m: float, volume_m3: floa
     if found is not None:
         return found
     reasons = []
+    here = {"netgen": importlib.util.find_spec("netgen"), "pytetwild": importlib.util.find_spec("pytetwild")}
     for which, module in _MODULES.items():
-        if importlib.util.find_spec(module) is None:
+        if here[module] is None:
             reasons.append(f"{module} is not installed")
             continue
         made, reason = _run(which, points_m, triangles, size_m)

@@ -15,6 +15,7 @@ import numpy as np
 from scipy.sparse import coo_matrix, csr_matrix
 
 from resonate.body.body import Forms, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.elastic import mass, stiffness, stiffness_law
 from resonate.body.reduce import bending_reach_m, reduced
 from resonate.body.solid_mesh import mesh_spot
@@ -29,7 +30,7 @@ if TYPE_CHECKING:
 
     from resonate.body.elastic import Cells
     from resonate.body.solid_layout import SolidLayout
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -37,7 +38,7 @@ _FIELDS = 3
 
 
 @dataclass(frozen=True)
-class SolidBody:
+class SolidBody(Described):
     """A solid; satisfies ``Body``. Parameters as for lines, with a solid layout."""
 
     spec: BodySpec
@@ -46,11 +47,6 @@ class SolidBody:
     temperature_k: float
     gravity_m_s2: float
     up: Array
-
-    @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
 
     @property
     def family(self) -> Literal["solid"]:
@@ -66,31 +62,6 @@ class SolidBody:
     def freedoms(self) -> int:
         """Three for each node."""
         return len(self.grid.nodes_m) * _FIELDS
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Material loss factor."""
-        return self.spec.material.loss
-
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What a person should know."""
-        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:

@@ -15,6 +15,7 @@ import numpy as np
 from scipy.sparse import block_diag, coo_matrix, csr_matrix, diags, hstack
 
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.heat import Heat
 from resonate.body.meridian import course
 from resonate.body.reduce import bending_reach_m, reduced
@@ -31,7 +32,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from resonate.body.vessel_layout import VesselLayout
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -45,7 +46,7 @@ _CANCELS = 1e-12
 
 
 @dataclass(frozen=True)
-class VesselBody:
+class VesselBody(Described):
     """A vessel; satisfies ``Body``. Parameters as for lines, with a vessel's layout."""
 
     spec: BodySpec
@@ -55,11 +56,6 @@ class VesselBody:
     gravity_m_s2: float
     up: Array
     family: Literal["line", "skin", "wall"] = "wall"
-
-    @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
 
     @property
     def shape(self) -> VesselShape:
@@ -76,31 +72,6 @@ class VesselBody:
     def freedoms(self) -> int:
         """Those of one harmonic for each group."""
         return self.copies * self.layout.freedoms
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Material loss factor."""
-        return self.spec.material.loss
-
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What a person should know."""
-        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:

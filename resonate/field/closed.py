@@ -19,6 +19,11 @@ if TYPE_CHECKING:
     ComplexArray = NDArray[np.complex128]
 
 
+# A vibrating sphere of order l, small against the wavelength, is (2 l + 1)/(l + 1) times as loud as the sum of its
+# simple sources: 1 breathing, 1.5 shaking, 5/3 for the oval mode that every vessel rings in, 2 for high orders.
+OVAL = 5.0 / 3.0
+
+
 @dataclass(frozen=True, slots=True)
 class ClosedSurface:
     """A closed body in free space (satisfies ``Transfer``).
@@ -33,18 +38,22 @@ class ClosedSurface:
         (n,) area of each sample.
     doubts : tuple[Doubt, ...]
         What the model leaves out.
+    gain : float
+        By how much the modes that matter most are louder than the sum of their simple sources.
 
     Notes
     -----
     Every part of the surface pushes air out as a simple source; what the body itself scatters is left out. On a
     small ball whose surface moves as a spherical harmonic of degree n that makes (n + 1)/(2 n + 1) of the exact
-    pressure: all of it for breathing, 2/3 for swaying, 3/5 for the first ringing mode, never less than half.
+    pressure: all of it for breathing, 2/3 for swaying, 3/5 for the first ringing mode, never less than half. An open
+    vessel is heard as if a lid closed it: neither the air inside nor what comes out of the mouth is there.
     """
 
     samples: Samples
     motion: Array
     area_m2: Array
     doubts: tuple[Doubt, ...] = ()
+    gain: float = 1.0
 
     def __post_init__(self) -> None:
         """Copy and freeze."""
@@ -73,12 +82,13 @@ class ClosedSurface:
 
         References
         ----------
+        Pierce, Acoustics (1989), sections 4.1 (simple sources) and 4.2 (spheres).
         Kinsler, Frey, Coppens & Sanders, Fundamentals of Acoustics 4th ed. (2000), section 7.2.
         """
         samples = self.samples
         rays = samples.rays(place_m)
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
-        spread = samples.air.density_kg_m3 / (4.0 * np.pi) * self.area_m2 / distance
+        spread = self.gain * samples.air.density_kg_m3 / (4.0 * np.pi) * self.area_m2 / distance
         heard = np.empty(samples.count, dtype=np.complex128)
         for part in samples.chunks():
             turned = phasor(samples.wavenumber_1_m[part, None] * (reference_m - distance))

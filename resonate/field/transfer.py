@@ -11,12 +11,11 @@ from typing import TYPE_CHECKING, Protocol
 
 import numpy as np
 
-from resonate.field.closed import ClosedSurface
+from resonate.field.closed import OVAL, ClosedSurface
 from resonate.field.dipoles import DipoleLine
 from resonate.field.doubts import closed_doubts, face_doubts, line_doubts, shell_doubts
 from resonate.field.rayleigh import BaffledFace
 from resonate.field.samples import motion_of, samples_of
-from resonate.field.shell import FreeShell
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -75,6 +74,6 @@ def transfer_for(body: Body, modes: ModeSet, air: Air) -> Transfer:
         return ClosedSurface(samples, outward, radiator.weights[:, 0], closed_doubts(body, modes))
     if radiator.kind == "surface":
         doubts = shell_doubts(body, modes, air, radius_m=samples.radius_m)
-        return FreeShell(samples, outward, radiator.weights[:, 0], doubts)
+        return ClosedSurface(samples, outward, radiator.weights[:, 0], doubts, gain=OVAL)
     doubts = face_doubts(body, modes, air, outward=outward, radius_m=samples.radius_m)
     return BaffledFace(samples, outward, radiator.normals, radiator.weights[:, 0], doubts)

@@ -7,8 +7,8 @@ import pytest
 from scipy.special import spherical_jn, spherical_yn
 
 from resonate.body.body import Radiator
+from resonate.field.closed import OVAL
 from resonate.field.doubts import told
-from resonate.field.shell import OVAL
 
 
 def sphere(air_model, radius, degree, wavenumber):
