@@ -75,6 +75,7 @@ class SurfaceSpot:
     poisson: float
     thickness_m: float
     mobility_power: float | None = None
+    wave_mobility_s_kg: float = 0.0
     spread_m: float = 0.0
 
 

@@ -18,7 +18,7 @@ from resonate.errors import BodyError
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from resonate.scene.model import BodySpec, SpotSpec
+    from resonate.scene.model import BodySpec, MaterialSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -26,6 +26,13 @@ if TYPE_CHECKING:
 REACH = 0.05
 _IN = 0.04
 _LOOKS = 513
+
+
+def plate_impedance(material: MaterialSpec, thickness_m: float) -> float:
+    """Driving-point impedance of an endless plate, 8 sqrt(D rho h), N s/m (Cremer, Heckl & Petersson 2005, ch. 5)."""
+    young, poisson = material.young_pa, material.poisson[0]
+    bending = float(np.sqrt(young[0] * young[1])) * thickness_m**3 / 12.0 / (1.0 - poisson**2)
+    return float(8.0 * np.sqrt(bending * material.density_kg_m3 * thickness_m))
 
 
 def share_of(pieces: tuple[Piece, ...], share: float) -> tuple[int, float]:
@@ -85,6 +92,7 @@ def _spot(spec: BodySpec, pieces: tuple[Piece, ...], foot: tuple[int, float], tu
         thickness_m=float(at.wall_m[0]),
         # Short waves see a flat plate.
         mobility_power=0.0,
+        wave_mobility_s_kg=1.0 / plate_impedance(spec.material, float(at.wall_m[0])),
     )
 
 

@@ -53,6 +53,8 @@ class Blow:
         (3, 3) static compliance of the modes left out, in the body frame, m/N.
     mobility_power : float or None
         How the mobility of those goes on with frequency, where that is known.
+    wave_mobility_s_kg : float
+        What it is at the least.
     mass_kg, speed_m_s, stiffness, loss_s_m : float
         Of the striker and its contact: F = K delta^1.5 (1 + mu delta').
     thickness_m : float
@@ -69,6 +71,7 @@ class Blow:
     gains: Array
     give_m_n: Array
     mobility_power: float | None
+    wave_mobility_s_kg: float
     mass_kg: float
     speed_m_s: float
     stiffness: float
@@ -220,6 +223,7 @@ def make_blows(
             gains=np.hstack((three @ modes.shape, three @ modes.rigid)),
             give_m_n=give,
             mobility_power=spot.mobility_power,
+            wave_mobility_s_kg=spot.wave_mobility_s_kg,
             mass_kg=spec.striker.mass_kg,
             speed_m_s=spec.speed_m_s,
             stiffness=local.stiffness,

@@ -53,7 +53,9 @@ class Ladder:
 NONE = Ladder(np.zeros(RUNGS), np.zeros(RUNGS), np.zeros(RUNGS))
 
 
-def ladder(omega: Array, gains: Array, *, give_m_n: float, power: float | None = None) -> Ladder:
+def ladder(
+    omega: Array, gains: Array, *, give_m_n: float, power: float | None = None, least_s_kg: float = 0.0
+) -> Ladder:
     """Lay the stand-ins of one spot.
 
     Parameters
@@ -66,8 +68,11 @@ def ladder(omega: Array, gains: Array, *, give_m_n: float, power: float | None =
         Static compliance of all other modes there, m/N.
     power : float, optional
         Of frequency, in (-1, 1), that squared gains per band follow; the static compliance is not needed then.
+    least_s_kg : float
+        The mean mobility beyond the kept modes is no less than this.
     """
-    density = _density(omega, gains)
+    # A mean mobility Y comes from squared gains of 2 Y / pi for each rad/s.
+    density = max(_density(omega, gains), 2.0 * least_s_kg / np.pi if len(omega) else 0.0)
     if density == 0.0 and give_m_n == 0.0:
         # A spot that no mode moves, or a body without any: the whole answer is in the contact itself.
         return NONE

@@ -124,6 +124,7 @@ class _Run:
                 row[: subject.elastic],
                 give_m_n=float(axis @ blow.give_m_n @ axis),
                 power=blow.mobility_power,
+                least_s_kg=blow.wave_mobility_s_kg,
             ),
             joined_s=state.time_s,
             closing_m_s=speed - float(row @ body.v),

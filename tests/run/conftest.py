@@ -49,6 +49,7 @@ def make_blow(row, **changes):
         "gains": DOWN[:, None] * np.atleast_1d(np.asarray(row, dtype=float)),
         "give_m_n": np.zeros((3, 3)),
         "mobility_power": None,
+        "wave_mobility_s_kg": 0.0,
         "mass_kg": 0.01,
         "speed_m_s": 1.0,
         "stiffness": 1e9,
