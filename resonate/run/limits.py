@@ -14,6 +14,8 @@ if TYPE_CHECKING:
     from resonate.run.record import Event, Ledger
     from resonate.run.track import BodyTrack
 
+# Mobility of a spot, against that of a particle of the body's mass, below which it is held.
+HELD = 1e-6
 # Turning faster than this share of the first mode splits and shifts it.
 SPIN = 0.02
 # Share of the energy of its strikes that may go where nothing is heard before it is said.
@@ -82,12 +84,29 @@ def beyond_rest(track: BodyTrack, body: Body, *, end_s: float) -> tuple[str, ...
     )
 
 
+def _on_what_is_held(track: BodyTrack, body: Body, events: Sequence[Event]) -> tuple[str, ...]:
+    """Warn about strikes on a place that hardly moves: they bounce as from a wall and excite nothing."""
+    notes = []
+    for event in events:
+        part = next(part for part in track.segments if event.strike in part.contacts)
+        assert part.rows is not None  # noqa: S101 (contact segments have rows)
+        row = part.rows[part.contacts.index(event.strike)]
+        # A free particle of the body's mass would take 1/mass.
+        if float(row @ row) * body.inertia.mass_kg < HELD:
+            notes.append(
+                f"body {track.name!r}: strike[{event.strike}] meets a place that is held and excites next to nothing: "
+                "strike where the body can move"
+            )
+    return tuple(notes)
+
+
 def beyond_linear(track: BodyTrack, body: Body, events: Sequence[Event]) -> tuple[str, ...]:
     """Warnings about deflection and spin."""
-    notes = []
+    notes: list[str] = []
     modes = track.modes
     if not modes.count:
         return ()
+    notes.extend(_on_what_is_held(track, body, events))
     for event in events:
         most = _bent(track, body, event.strike)
         if most > body.linear_reach_m:

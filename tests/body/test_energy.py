@@ -346,3 +346,12 @@ def test_a_skin_stores_its_tension_times_the_area_it_takes_up():
         0.5 * kept @ (forms.stiffness @ kept), 2000 * np.pi**2 * (b / a + a / b) / 8, rtol=1e-8
     )
     assert_allclose(kept @ (forms.mass @ kept), DENSITY * 2e-4 * a * b / 4, rtol=1e-8)
+
+
+@pytest.mark.parametrize(("tension", "said"), [(30.0, False), (3e4, True)])
+def test_a_string_stretched_beyond_what_any_bears_is_told(tension, said):
+    # Drawn nylon breaks at a strain of some 20 % (handbook value, from memory); sigma = 4 T / (pi d^2).
+    nylon = "material = {density = 1140, young = 3e9, poisson = 0.39, loss = 0.02}"
+    body = build(f'shape = "string"\nlength = 0.6\ndiameter = 0.001\ntension = {tension}\n{nylon}')
+
+    assert any("would break" in warning for warning in body.warnings) is said

@@ -254,6 +254,14 @@ def test_what_truncation_takes_is_said():
     assert any(f"body 'lid': {100 * share:.0f} % of the energy" in note for note in record.warnings)
 
 
+def test_a_strike_on_a_held_place_is_said():
+    held = 'support = [{where = "left", hold = "clamped"}]'
+    on_it = BAR_STRIKE.replace("spot = {fraction = [0.4]}", "spot = {point = [0, 0.005, 0]}")
+    assert on_it != BAR_STRIKE
+    assert any("meets a place that is held" in note for note in run_of(scene_of(on_it, bar=held)).warnings)
+    assert not any("place that is held" in note for note in run_of(scene_of(BAR_STRIKE, bar=held)).warnings)
+
+
 def test_refused_strikes_say_which_and_how_to_fix(struck):
     _, bodies, modes = struck
     wrong = BAR_STRIKE + "direction = [0, 1, 0]\n"
