@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from resonate.body.coil import CoilBody
+from resonate.body.coil_layout import lay_coil
 from resonate.body.flat import FlatBody
 from resonate.body.flat_layout import lay_flat
 from resonate.body.line import LineBody
@@ -20,6 +22,7 @@ from resonate.body.vessel_layout import ORDER, lay_vessel
 from resonate.scene.model import (
     BallShape,
     BlockShape,
+    CoilShape,
     CylinderShape,
     MembraneShape,
     PlateShape,
@@ -92,6 +95,11 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
         shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
         key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
         return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
+    if isinstance(spec.shape, CoilShape):
+        coil = lay_coil(spec)
+        mesh = (coil.grid.order, len(coil.grid.elements), len(coil.grid.nodes_m))
+        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=mesh)
+        return CoilBody(spec, coil, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)
     layout = lay_flat(spec) if flat else lay_line(spec)
     mesh = (layout.grid.order, len(layout.grid.elements), len(layout.grid.nodes_m))

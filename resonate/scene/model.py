@@ -18,6 +18,7 @@ from resonate.scene.bodies import (
     SpringHold,
 )
 from resonate.scene.clock import Clock, FrameRate
+from resonate.scene.coil import CoilShape
 from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
 from resonate.scene.kinds import Part
 from resonate.scene.matter import MaterialSpec, StrikerSpec
@@ -47,6 +48,7 @@ __all__ = [
     "BoxPlace",
     "CircleOutline",
     "Clock",
+    "CoilShape",
     "CordHold",
     "CylinderShape",
     "FixHold",

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Annotated, Any, Final, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
 
+from resonate.scene.coil import CoilShape
 from resonate.scene.kinds import Length, Part, number
 from resonate.scene.refused import RefusedError, shown
 from resonate.scene.solids import AnySolid, BallShape, BlockShape, CylinderShape, SolidShape, face_names, solid_spots
@@ -328,7 +329,7 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | MembraneShape | PlateShape | VesselShape | AnySolid,
+    BarShape | TubeShape | StringShape | CoilShape | MembraneShape | PlateShape | VesselShape | AnySolid,
     Field(discriminator="kind"),
 ]
 
@@ -336,6 +337,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "bar": BarShape,
     "tube": TubeShape,
     "string": StringShape,
+    "coil": CoilShape,
     "membrane": MembraneShape,
     "plate": PlateShape,
     "block": BlockShape,
@@ -352,13 +354,13 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "coil sheet lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "sheet lumps assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
 def is_line(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
-    """Whether a shape is a line: bar, tube or string."""
-    return isinstance(shape, BarShape | TubeShape | StringShape)
+    """Whether a shape is a line: bar, tube, string or coil."""
+    return isinstance(shape, BarShape | TubeShape | StringShape | CoilShape)
 
 
 def is_solid(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
