@@ -21,6 +21,7 @@ from resonate.scene.clock import Clock, FrameRate
 from resonate.scene.coil import CoilShape
 from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
 from resonate.scene.kinds import Part
+from resonate.scene.lumps import LinkSpec, LumpSpec, LumpsShape
 from resonate.scene.matter import MaterialSpec, StrikerSpec
 from resonate.scene.settings import LevelSpec, PictureSpec, SoundSpec, TakeSpec, WorldSpec
 from resonate.scene.shapes import (
@@ -55,7 +56,10 @@ __all__ = [
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
+    "LinkSpec",
     "LugSpec",
+    "LumpSpec",
+    "LumpsShape",
     "MaterialSpec",
     "MembraneShape",
     "MicSpec",

@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, Field, model_validator
 from resonate.scene.coil import CoilShape
 from resonate.scene.corners import Corners, at_place, corners
 from resonate.scene.kinds import Length, Part, number
+from resonate.scene.lumps import LumpsShape
 from resonate.scene.refused import RefusedError, shown
 from resonate.scene.solids import AnySolid, BallShape, BlockShape, CylinderShape, SolidShape, face_names, solid_spots
 from resonate.scene.vessel import VesselShape
@@ -236,7 +237,7 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | CoilShape | MembraneShape | PlateShape | VesselShape | AnySolid,
+    BarShape | TubeShape | StringShape | CoilShape | MembraneShape | PlateShape | VesselShape | AnySolid | LumpsShape,
     Field(discriminator="kind"),
 ]
 
@@ -252,6 +253,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "cylinder": CylinderShape,
     "solid": SolidShape,
     "vessel": VesselShape,
+    "lumps": LumpsShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -261,7 +263,7 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "sheet lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "sheet assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
@@ -283,6 +285,8 @@ def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401, PLR0911 (any mem
         return face_names(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
+    if isinstance(shape, LumpsShape):
+        return ("all", *(point.name for point in shape.points))
     outline = shape.outline
     if isinstance(outline, RectangleOutline):
         return ("x-", "x+", "z-", "z+", "edge")
@@ -301,6 +305,8 @@ def spot_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
         return solid_spots(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
+    if isinstance(shape, LumpsShape):
+        return tuple(point.name for point in shape.points)
     if isinstance(shape.outline, RingOutline):
         return ("outer", "inner", "edge")
     return ("centre", "edge")
