@@ -46,13 +46,15 @@ class Radiator:
     ``kind`` is ``baffled`` (flat faces: ``weights`` (n, 3) holds the area, m^2, in column 0), ``closed`` (the same
     for the whole surface of a body) or
     ``dipoles`` (slices of a line: ``weights`` is the displaced plus added volume, m^3, for motion
-    along body x, y, z). ``points_m`` (n, 3), ``normals`` (n, 3).
+    along body x, y, z). ``points_m`` (n, 3), ``normals`` (n, 3). ``half_m``: half the thickness of the slices where
+    they do not lie on one straight line.
     """
 
     kind: Literal["baffled", "dipoles", "surface", "closed"]
     points_m: Array
     normals: Array
     weights: Array
+    half_m: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,7 +121,7 @@ class Body(Protocol):
         """The name given in the scene."""
 
     @property
-    def family(self) -> Literal["line", "skin", "wall", "solid"]:
+    def family(self) -> Literal["line", "skin", "wall", "solid", "lump"]:
         """Which group of shapes it belongs to."""
 
     @property

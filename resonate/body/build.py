@@ -8,10 +8,13 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from resonate.body.coil import CoilBody
+from resonate.body.coil_layout import lay_coil
 from resonate.body.flat import FlatBody
 from resonate.body.flat_layout import lay_flat
 from resonate.body.line import LineBody
 from resonate.body.line_layout import lay_line
+from resonate.body.lumps import LumpsBody
 from resonate.body.solid import SolidBody
 from resonate.body.solid_layout import lay_solid
 from resonate.body.solid_mesh import lay_mesh
@@ -20,7 +23,9 @@ from resonate.body.vessel_layout import ORDER, lay_vessel
 from resonate.scene.model import (
     BallShape,
     BlockShape,
+    CoilShape,
     CylinderShape,
+    LumpsShape,
     MembraneShape,
     PlateShape,
     SolidShape,
@@ -66,6 +71,13 @@ def _key(spec: BodySpec, *, temperature_k: float, gravity_m_s2: float, mesh: tup
     return hashlib.sha256(json.dumps(facts, sort_keys=True).encode()).hexdigest()
 
 
+def _lump_key(spec: BodySpec, gravity_m_s2: float) -> str:
+    # Weight decides where points rest, however they are held.
+    pull = 0.0 if spec.floating else gravity_m_s2
+    facts = [_key(spec, temperature_k=0.0, gravity_m_s2=0.0, mesh=()), pull, *_up(spec).tolist()]
+    return hashlib.sha256(json.dumps(facts).encode()).hexdigest()
+
+
 def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: float = 9.80665) -> Body:
     """Lay the mesh of a body and make its energies ready.
 
@@ -92,6 +104,13 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
         shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
         key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
         return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
+    if isinstance(spec.shape, LumpsShape):
+        return LumpsBody(spec, _lump_key(spec, gravity_m_s2), gravity_m_s2, _up(spec))
+    if isinstance(spec.shape, CoilShape):
+        coil = lay_coil(spec)
+        mesh = (coil.grid.order, len(coil.grid.elements), len(coil.grid.nodes_m))
+        key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=mesh)
+        return CoilBody(spec, coil, key, temperature_k, gravity_m_s2, _up(spec))
     flat = isinstance(spec.shape, PlateShape | MembraneShape)
     layout = lay_flat(spec) if flat else lay_line(spec)
     mesh = (layout.grid.order, len(layout.grid.elements), len(layout.grid.nodes_m))

@@ -119,7 +119,7 @@ def line_doubts(body: Body, modes: ModeSet, air: Air) -> tuple[Doubt, ...]:
     length = float(np.linalg.norm(axis))
     if length > 0.0:
         span = span - np.outer(span @ axis, axis) / length**2
-    half_m = float(np.sqrt(np.max(np.einsum("ni,ni->n", span, span))))
+    half_m = body.radiator.half_m or float(np.sqrt(np.max(np.einsum("ni,ni->n", span, span))))
     limit_hz = COMPACT * air.speed_m_s / (2.0 * np.pi * half_m) if half_m > 0.0 else np.inf
     count = int(np.sum(heard > limit_hz))
     return (Doubt("thick line", body.name, count, len(heard), limit_hz),) if count else ()

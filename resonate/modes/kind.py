@@ -23,7 +23,7 @@ def motions(body: Body, modes: ModeSet) -> tuple[str, ...]:
     """Name the motion that holds most of the kinetic energy of each mode (m,).
 
     Lines move ``up`` (along the body's y), ``across`` (z), ``along`` (x) or ``twist``; plates by ``bending`` or
-    ``in-plane``; skins along their ``normal``.
+    ``in-plane``; skins along their ``normal``; points ``up``, ``across`` or ``along``.
 
     Parameters
     ----------
@@ -32,6 +32,8 @@ def motions(body: Body, modes: ModeSet) -> tuple[str, ...]:
     modes : ModeSet
         Its modes, solved or from the store.
     """
+    if body.family == "lump":
+        return _moved(body, modes)
     kinds = _MOTIONS[body.family]
     fields = sum(len(places) for places in kinds.values())
     forms = body.forms()
@@ -41,3 +43,10 @@ def motions(body: Body, modes: ModeSet) -> tuple[str, ...]:
     parts = np.stack([share[list(places)].sum(axis=0) for places in kinds.values()])
     names = tuple(kinds)
     return tuple(names[place] for place in np.argmax(parts, axis=0))
+
+
+def _moved(body: Body, modes: ModeSet) -> tuple[str, ...]:
+    points = body.radiator.points_m
+    moved = np.asarray(body.probe(points) @ modes.shape).reshape(len(points), 3, modes.count)
+    names = ("along", "up", "across")
+    return tuple(names[axis] for axis in np.argmax((moved**2).sum(axis=0), axis=0))

@@ -128,7 +128,7 @@ def _closing(spec: StrikeSpec) -> float:
 
 def _touched(body: Body, spots: Sequence[SurfaceSpot], radii_m: Sequence[float]) -> list[Array]:
     """Motion (3, d) of every spot by every freedom."""
-    if body.family == "line":
+    if body.family in ("line", "lump"):
         points, weights = [spot.point_m[None] for spot in spots], np.ones(1)
     else:
         # Averaged over the pressed patch, so that fine meshes do not make the spot softer.

@@ -216,6 +216,13 @@ class BodySpec(Part):
                 "leave out support (it is then pinned all round), or hold its ends or edges",
                 at=("support",),
             )
+        hung = [place for place, entry in enumerate(self.support) if isinstance(entry.hold, CordHold)]
+        if hung and self.shape.kind == "lumps":
+            raise RefusedError(
+                "points do not hang from cords",
+                "hang them from a spring: one more point that is pinned, and a spring with its rest length",
+                at=("support", hung[0], "hold"),
+            )
         seen: set[str] = set()
         for place, entry in enumerate(self.support):
             if not isinstance(entry.where, NamedPlace):

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any, Final
 
-from resonate.scene.names import choose
+from resonate.scene.names import choose, listing
 from resonate.scene.refused import shown
 from resonate.scene.shapes import is_line, spot_names
 
@@ -86,7 +86,13 @@ def check_spot(spot: SpotSpec, shape: Any, path: Path, faults: Faults) -> None: 
             what=f"{shown(spot.name)} is not a spot of this {shape.kind}",
             fix=choose(spot.name, allowed),
         )
-    if spot.fraction is not None and len(spot.fraction) == 1 and not is_line(shape):
+    if spot.fraction is not None and shape.kind == "lumps":
+        faults.add(
+            (*path, "fraction"),
+            what="fractions mean nothing on single points",
+            fix=f"name one of {listing(allowed)}, or give a point or a direction",
+        )
+    elif spot.fraction is not None and len(spot.fraction) == 1 and not is_line(shape):
         faults.add(
             (*path, "fraction"), what=f"1 fraction on a {shape.kind}", fix="give [u, v], shares along x and z"
         )

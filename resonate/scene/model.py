@@ -18,8 +18,10 @@ from resonate.scene.bodies import (
     SpringHold,
 )
 from resonate.scene.clock import Clock, FrameRate
+from resonate.scene.coil import CoilShape
 from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
 from resonate.scene.kinds import Part
+from resonate.scene.lumps import LinkSpec, LumpSpec, LumpsShape
 from resonate.scene.matter import MaterialSpec, StrikerSpec
 from resonate.scene.settings import LevelSpec, PictureSpec, SoundSpec, TakeSpec, WorldSpec
 from resonate.scene.shapes import (
@@ -47,13 +49,17 @@ __all__ = [
     "BoxPlace",
     "CircleOutline",
     "Clock",
+    "CoilShape",
     "CordHold",
     "CylinderShape",
     "FixHold",
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
+    "LinkSpec",
     "LugSpec",
+    "LumpSpec",
+    "LumpsShape",
     "MaterialSpec",
     "MembraneShape",
     "MicSpec",

@@ -2,29 +2,26 @@
 
 from __future__ import annotations
 
-import math
 from typing import TYPE_CHECKING, Annotated, Any, Final, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
 
+from resonate.scene.coil import CoilShape
+from resonate.scene.corners import Corners, at_place, corners
 from resonate.scene.kinds import Length, Part, number
+from resonate.scene.lumps import LumpsShape
 from resonate.scene.refused import RefusedError, shown
 from resonate.scene.solids import AnySolid, BallShape, BlockShape, CylinderShape, SolidShape, face_names, solid_spots
 from resonate.scene.vessel import VesselShape
 
 if TYPE_CHECKING:
-    from collections.abc import Callable, Mapping
+    from collections.abc import Mapping
 
 Profile = tuple[tuple[float, float, float], ...]
-Corners = tuple[tuple[float, float], ...]
-
-# Elements in a thinner corner are so long that rounding drowns their modes: found by trial, with room to spare.
-_SHARPEST_DEG: Final = 0.5
 
 _read_fraction = number("fraction", least=0.0, most=1.0)
 _read_height = number("length", least=0.0)
 _read_width = number("length", above=0.0)
-_read_corner = number("length")
 
 
 class RectangleOutline(Part):
@@ -60,99 +57,11 @@ class RingOutline(Part):
         return self
 
 
-def _corners(value: object) -> Corners:
-    if not isinstance(value, list | tuple) or len(value) < 3:  # noqa: PLR2004 (a triangle)
-        raise RefusedError(
-            f"{shown(value)} has fewer than 3 corners", "give at least 3 corners [[x, z], ...]"
-        )
-    corners: list[tuple[float, float]] = []
-    for place, corner in enumerate(value):
-        if not isinstance(corner, list | tuple) or len(corner) != 2:  # noqa: PLR2004 (x and z)
-            raise RefusedError(f"{shown(corner)} is not a corner", "give [x, z]", at=(place,))
-        corners.append((_at(_read_corner, corner[0], (place, 0)), _at(_read_corner, corner[1], (place, 1))))
-    _check_polygon(corners)
-    return tuple(corners)
-
-
-def _at(read: Callable[[object], float], value: object, at: tuple[int, ...]) -> float:
-    try:
-        return read(value)
-    except RefusedError as error:
-        raise RefusedError(error.what, error.fix, at=at) from error
-
-
-def _check_polygon(corners: list[tuple[float, float]]) -> None:
-    count = len(corners)
-    for k in range(count):
-        if corners[k] == corners[(k + 1) % count]:
-            raise RefusedError(
-                f"corners {k + 1} and {(k + 1) % count + 1} are the same point",
-                "leave one out; the outline closes by itself",
-                at=((k + 1) % count,),
-            )
-    size = max(max(axis) - min(axis) for axis in zip(*corners, strict=True))
-    far = max(corners, key=lambda corner: math.dist(corner, corners[0]))
-    if all(abs(_side(corners[0], far, corner)) < 1e-9 * size * size for corner in corners):
-        raise RefusedError("the polygon has no area", "give corners that do not lie on one line")
-    for k, corner in enumerate(corners):
-        angle = _opening(corners[k - 1], corner, corners[(k + 1) % count])
-        if 0.0 < angle < _SHARPEST_DEG:
-            raise RefusedError(
-                f"corner {k + 1} opens by {angle:.2g} deg, too thin for a mesh",
-                f"open it to at least {_SHARPEST_DEG:g} deg, or cut its tip off with one corner more",
-                at=(k,),
-            )
-    for k in range(count):
-        for j in range(k + 1, count):
-            adjacent = j == k + 1 or (k == 0 and j == count - 1)
-            ends = (corners[k], corners[(k + 1) % count], corners[j], corners[(j + 1) % count])
-            if _overlap(*ends) if adjacent else _cross(*ends):
-                raise RefusedError(
-                    f"edges {k + 1} and {j + 1} of the polygon cross",
-                    "list the corners in order round the outline",
-                )
-
-
-Point = tuple[float, float]
-
-
-def _side(a: Point, b: Point, c: Point) -> float:
-    return (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0])
-
-
-def _opening(before: Point, corner: Point, after: Point) -> float:
-    """Angle between the two sides of a corner, deg; 0 where one folds back on the other."""
-    one, two = ((end[0] - corner[0], end[1] - corner[1]) for end in (before, after))
-    cross, dot = one[0] * two[1] - one[1] * two[0], one[0] * two[0] + one[1] * two[1]
-    return math.degrees(math.atan2(abs(cross), dot))
-
-
-def _within(a: Point, b: Point, c: Point) -> bool:
-    return min(a[0], b[0]) <= c[0] <= max(a[0], b[0]) and min(a[1], b[1]) <= c[1] <= max(a[1], b[1])
-
-
-def _cross(a: Point, b: Point, c: Point, d: Point) -> bool:
-    one, two, three, four = _side(a, b, c), _side(a, b, d), _side(c, d, a), _side(c, d, b)
-    if one * two < 0 and three * four < 0:
-        return True
-    touching = ((one, a, b, c), (two, a, b, d), (three, c, d, a), (four, c, d, b))
-    return any(side == 0 and _within(start, stop, point) for side, start, stop, point in touching)
-
-
-def _overlap(a: Point, b: Point, c: Point, d: Point) -> bool:
-    # Neighbours share a corner; they overlap only when they fold back on each other.
-    shared, one, two = (b, a, d) if b == c else (a, b, c)
-    if _side(one, shared, two) != 0:
-        return False
-    dot = (one[0] - shared[0]) * (two[0] - shared[0]) + (one[1] - shared[1]) * (two[1] - shared[1])
-    return dot > 0
-
-
 class PolygonOutline(Part):
     """``{polygon = [[x, z], ...]}``: corners in order, the origin where they are measured from."""
 
     kind: Literal["polygon"] = "polygon"
-    corners_m: Annotated[Corners, BeforeValidator(_corners)] = Field(validation_alias="corners")
+    corners_m: Annotated[Corners, BeforeValidator(corners)] = Field(validation_alias="corners")
 
 
 Outline = Annotated[
@@ -176,7 +85,7 @@ def _profile(value: object) -> Profile | tuple[tuple[float, ...], ...]:
                 at=(place,),
             )
         reads = (_read_fraction, _read_height, _read_width)
-        rows.append(tuple(_at(reads[k], item, (place, k)) for k, item in enumerate(row)))
+        rows.append(tuple(at_place(reads[k], item, (place, k)) for k, item in enumerate(row)))
     _check_profile(rows)
     return tuple(rows)
 
@@ -328,7 +237,7 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | MembraneShape | PlateShape | VesselShape | AnySolid,
+    BarShape | TubeShape | StringShape | CoilShape | MembraneShape | PlateShape | VesselShape | AnySolid | LumpsShape,
     Field(discriminator="kind"),
 ]
 
@@ -336,6 +245,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "bar": BarShape,
     "tube": TubeShape,
     "string": StringShape,
+    "coil": CoilShape,
     "membrane": MembraneShape,
     "plate": PlateShape,
     "block": BlockShape,
@@ -343,6 +253,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "cylinder": CylinderShape,
     "solid": SolidShape,
     "vessel": VesselShape,
+    "lumps": LumpsShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -352,13 +263,13 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "coil sheet lumps assembly formula".split()  # noqa: SIM905 (a word list)
+    "sheet assembly formula".split()  # noqa: SIM905 (a word list)
 )
 
 
 def is_line(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
-    """Whether a shape is a line: bar, tube or string."""
-    return isinstance(shape, BarShape | TubeShape | StringShape)
+    """Whether a shape is a line: bar, tube, string or coil."""
+    return isinstance(shape, BarShape | TubeShape | StringShape | CoilShape)
 
 
 def is_solid(shape: Any) -> bool:  # noqa: ANN401 (any member of the union)
@@ -374,6 +285,8 @@ def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401, PLR0911 (any mem
         return face_names(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
+    if isinstance(shape, LumpsShape):
+        return ("all", *(point.name for point in shape.points))
     outline = shape.outline
     if isinstance(outline, RectangleOutline):
         return ("x-", "x+", "z-", "z+", "edge")
@@ -392,6 +305,8 @@ def spot_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
         return solid_spots(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
+    if isinstance(shape, LumpsShape):
+        return tuple(point.name for point in shape.points)
     if isinstance(shape.outline, RingOutline):
         return ("outer", "inner", "edge")
     return ("centre", "edge")

@@ -24,6 +24,7 @@ from resonate.scene.bodies import (
 )
 from resonate.scene.faults import Faults, keys_of
 from resonate.scene.later import refuse_keys
+from resonate.scene.lumps import listed
 from resonate.scene.matter import MaterialSpec, StrikerSpec
 from resonate.scene.names import choose, listing
 from resonate.scene.presets import resolved
@@ -159,6 +160,14 @@ def _build_shape(kind: str, parts: dict[str, Any], path: Path, faults: Faults) -
         outline = _read_outline(parts["outline"], (*path, "outline"), faults)
         sound = outline is not None
         parts = {**parts, "outline": outline or OUTLINES["circle"].model_validate({"diameter": 1.0})}
+    for key in ("points", "springs") if kind == "lumps" else ():
+        if isinstance(parts.get(key), str):
+            # A table beside the scene; its rows then stand as if they were listed.
+            try:
+                parts = {**parts, key: listed(key, FilePath(faults.where).parent / parts[key])}
+            except RefusedError as error:
+                faults.refuse((*path, key), error)
+                return None
     shape = faults.part(SHAPES[kind], parts, path)
     if isinstance(shape, SolidShape):
         return _with_surface(shape, path, faults)

@@ -77,7 +77,7 @@ WRITTEN = [
      "nothing holds"),
     ("a place beyond reason", "place = [0, 0, 1]", "place = [0, 0, 1e300]", ":21: body[1].place[2]", "out of range"),
     ("two bodies of one name", 'name = "wire"', 'name = "tray"', ":15: body[1].name", "taken by body[0]"),
-    ("a shape not there yet", 'shape = "string"', 'shape = "coil"', ":16: body[1].shape", "not in this version"),
+    ("a shape not there yet", 'shape = "string"', 'shape = "sheet"', ":16: body[1].shape", "not in this version"),
     ("a strike on no body", 'body = "tray"', 'body = "try"', ":24: strike[0].body", "did you mean 'tray'?"),
     ("a strike before the start", 'time = "0.1 s"', 'time = "-1 s"', ":25: strike[0].time", "before the take begins"),
     ("a strike after the end", 'time = "0.1 s"', 'time = "9 s"', ":25: strike[0].time", "after the take ends"),

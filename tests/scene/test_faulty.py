@@ -196,7 +196,7 @@ CASES = [
     ("[[mic]]", "[mic]", "mic", 29, "is not a list of tables", "[[mic]]"),
     ("place = [0, 1, 0]", "", "mic[0].place", 29, "place is missing", "add place"),
     # what later versions do
-    ('shape = "plate"', 'shape = "coil"', "body[0].shape", 11, "not in this version", "membrane"),
+    ('shape = "plate"', 'shape = "sheet"', "body[0].shape", 11, "not in this version", "membrane"),
     ('length = "2 s"', 'length = "2 s"\nfiles = ["wav", "usd"]', "take.files[1]", 4, "not in this version",
      "curves"),
     ('rate = "48 kHz"', 'rate = "48 kHz"\nhead = "hit"', "sound.head", 9, "not in this version", "picture"),
