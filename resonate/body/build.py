@@ -12,6 +12,7 @@ from resonate.body.coil import CoilBody
 from resonate.body.coil_layout import lay_coil
 from resonate.body.flat import FlatBody
 from resonate.body.flat_layout import lay_flat
+from resonate.body.formula import FormulaBody
 from resonate.body.line import LineBody
 from resonate.body.line_layout import lay_line
 from resonate.body.lumps import LumpsBody
@@ -25,6 +26,7 @@ from resonate.scene.model import (
     BlockShape,
     CoilShape,
     CylinderShape,
+    FormulaShape,
     LumpsShape,
     MembraneShape,
     PlateShape,
@@ -104,6 +106,8 @@ def build_body(spec: BodySpec, *, temperature_k: float = 293.15, gravity_m_s2: f
         shells = (ORDER, wall.elements, wall.freedoms, wall.harmonics)
         key = _key(spec, temperature_k=temperature_k, gravity_m_s2=gravity_m_s2, mesh=shells)
         return VesselBody(spec, wall, key, temperature_k, gravity_m_s2, _up(spec))
+    if isinstance(spec.shape, FormulaShape):
+        return FormulaBody(spec, _key(spec, temperature_k=0.0, gravity_m_s2=0.0, mesh=()))
     if isinstance(spec.shape, LumpsShape):
         return LumpsBody(spec, _lump_key(spec, gravity_m_s2), gravity_m_s2, _up(spec))
     if isinstance(spec.shape, CoilShape):

@@ -223,6 +223,14 @@ class BodySpec(Part):
                 "hang them from a spring: one more point that is pinned, and a spring with its rest length",
                 at=("support", hung[0], "hold"),
             )
+        moves = {"support": self.support, "held": self.held, "speed": any(self.speed_m_s), "spin": any(self.spin_rad_s)}
+        extra = [key for key, value in moves.items() if value]
+        if extra and self.shape.kind == "formula":
+            raise RefusedError(
+                f"a formula with {extra[0]}",
+                f"remove {extra[0]}: what holds and moves it stands in its energies",
+                at=(extra[0],),
+            )
         seen: set[str] = set()
         for place, entry in enumerate(self.support):
             if not isinstance(entry.where, NamedPlace):

@@ -86,7 +86,7 @@ def check_spot(spot: SpotSpec, shape: Any, path: Path, faults: Faults) -> None: 
             what=f"{shown(spot.name)} is not a spot of this {shape.kind}",
             fix=choose(spot.name, allowed),
         )
-    if spot.fraction is not None and shape.kind == "lumps":
+    if spot.fraction is not None and shape.kind in ("lumps", "formula"):
         faults.add(
             (*path, "fraction"),
             what="fractions mean nothing on single points",

@@ -48,6 +48,8 @@ def refuse_keys(table: dict[str, Any], kind: str, path: Path, faults: Faults) ->
     """Note keys of later versions in one table and return it without them."""
     rest = dict(table)
     for key, (values, fix) in _KEYS[kind].items():
+        if key == "mesh" and table.get("shape") == "formula":
+            continue  # what a formula shows is its own
         if key in rest and (values is None or rest[key] in values):
             given = key if values is None else f"{key} = {shown(rest[key])}"
             faults.add((*path, key), what=f"{given} is not in this version", fix=fix)

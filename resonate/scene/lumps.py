@@ -116,6 +116,16 @@ class LumpsShape(Part):
         return self
 
     @property
+    def point_names(self) -> tuple[str, ...]:
+        """What a strike may call its spot."""
+        return tuple(point.name for point in self.points)
+
+    @property
+    def held_names(self) -> tuple[str, ...]:
+        """What a support may call its place."""
+        return ("all", *self.point_names)
+
+    @property
     def middle_m(self) -> tuple[float, float, float]:
         """Middle of the box round the points."""
         axes = list(zip(*(point.place_m for point in self.points), strict=True))

@@ -19,6 +19,7 @@ from resonate.scene.bodies import (
 )
 from resonate.scene.clock import Clock, FrameRate
 from resonate.scene.coil import CoilShape
+from resonate.scene.formula import FormulaShape, MeshSpec
 from resonate.scene.happenings import MicSpec, SpotSpec, StrikeSpec
 from resonate.scene.kinds import Part
 from resonate.scene.lumps import LinkSpec, LumpSpec, LumpsShape
@@ -53,6 +54,7 @@ __all__ = [
     "CordHold",
     "CylinderShape",
     "FixHold",
+    "FormulaShape",
     "FrameRate",
     "HoldSpec",
     "LevelSpec",
@@ -62,6 +64,7 @@ __all__ = [
     "LumpsShape",
     "MaterialSpec",
     "MembraneShape",
+    "MeshSpec",
     "MicSpec",
     "NamedHold",
     "NamedPlace",

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 from pydantic import BaseModel
 
+from resonate.scene.formula import FormulaShape
 from resonate.scene.happenings import MicSpec
 from resonate.scene.lumps import LumpsShape
 from resonate.scene.shapes import PolygonOutline, is_line, is_solid
@@ -45,7 +46,7 @@ def _middle(shape: Any) -> Triple:  # noqa: ANN401 (any member of the union)
         return 0.5 * shape.length_m, 0.0, 0.0
     if is_solid(shape):
         return 0.0, 0.0, 0.0
-    if isinstance(shape, LumpsShape):
+    if isinstance(shape, LumpsShape | FormulaShape):
         return shape.middle_m
     if isinstance(shape, VesselShape):
         heights = [row[1] for row in shape.profile_m]

@@ -8,6 +8,7 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from resonate.scene.coil import CoilShape
 from resonate.scene.corners import Corners, at_place, corners
+from resonate.scene.formula import FormulaShape
 from resonate.scene.kinds import Length, Part, number
 from resonate.scene.lumps import LumpsShape
 from resonate.scene.refused import RefusedError, shown
@@ -237,7 +238,16 @@ class PlateShape(Part):
 
 
 ShapeSpec = Annotated[
-    BarShape | TubeShape | StringShape | CoilShape | MembraneShape | PlateShape | VesselShape | AnySolid | LumpsShape,
+    BarShape
+    | TubeShape
+    | StringShape
+    | CoilShape
+    | MembraneShape
+    | PlateShape
+    | VesselShape
+    | AnySolid
+    | LumpsShape
+    | FormulaShape,
     Field(discriminator="kind"),
 ]
 
@@ -254,6 +264,7 @@ SHAPES: Final[Mapping[str, type[Part]]] = {
     "solid": SolidShape,
     "vessel": VesselShape,
     "lumps": LumpsShape,
+    "formula": FormulaShape,
 }
 OUTLINES: Final[Mapping[str, type[Part]]] = {
     "rectangle": RectangleOutline,
@@ -263,7 +274,7 @@ OUTLINES: Final[Mapping[str, type[Part]]] = {
 }
 #: Shapes that a later version will know.
 LATER_SHAPES: Final = (
-    "sheet assembly formula".split()  # noqa: SIM905 (a word list)
+    "sheet assembly".split()  # noqa: SIM905 (a word list)
 )
 
 
@@ -285,8 +296,8 @@ def edge_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401, PLR0911 (any mem
         return face_names(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
-    if isinstance(shape, LumpsShape):
-        return ("all", *(point.name for point in shape.points))
+    if isinstance(shape, LumpsShape | FormulaShape):
+        return shape.held_names
     outline = shape.outline
     if isinstance(outline, RectangleOutline):
         return ("x-", "x+", "z-", "z+", "edge")
@@ -305,8 +316,8 @@ def spot_names(shape: Any) -> tuple[str, ...]:  # noqa: ANN401 (any member of th
         return solid_spots(shape)
     if isinstance(shape, VesselShape):
         return ("rim", "base")
-    if isinstance(shape, LumpsShape):
-        return tuple(point.name for point in shape.points)
+    if isinstance(shape, LumpsShape | FormulaShape):
+        return shape.point_names
     if isinstance(shape.outline, RingOutline):
         return ("outer", "inner", "edge")
     return ("centre", "edge")
