@@ -32,6 +32,8 @@ if TYPE_CHECKING:
 _DISC = 8.0 / 3.0
 # Where the mesh is not moved by what it is made of, all its points lie on one place.
 _ALIKE = 1e-9
+# Points carried at a time: every operation of a formula keeps its derivatives for all of them.
+_CHUNK = 500
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +111,14 @@ class FormulaBody:
         return find_rest(self.shape, name=self.name)
 
     def _carry(self, points: Array) -> _Carried:
+        parts = [self._carried(points[begin : begin + _CHUNK]) for begin in range(0, len(points), _CHUNK)]
+        return _Carried(
+            np.concatenate([part.place_m for part in parts]),
+            np.concatenate([part.by_coordinate for part in parts]),
+            np.concatenate([part.by_point for part in parts]),
+        )
+
+    def _carried(self, points: Array) -> _Carried:
         count, rest = self.freedoms, self.rest.place
         at = np.hstack([np.broadcast_to(rest, (len(points), count)), points])
         axes = [evaluate(self.shape.place_tape(axis), at, by=count + 3, curved=False) for axis in range(3)]
