@@ -30,6 +30,10 @@ _QUADRATIC = 1e-9
 # Potential departs from its parabola by this share where the pitch begins to glide.
 _GLIDE = 0.05
 _HALVINGS = 40
+# Masses and stiffnesses beyond this, in SI units, are slips.
+_LARGEST = 1e24
+# rad^2/s^2
+_NOTHING = 1e-16
 
 
 @dataclass(frozen=True, slots=True)
@@ -147,7 +151,13 @@ def _settled(shape: FormulaShape, kinetic: Tape, place: Array, *, name: str) -> 
             f"the rest at {_told(shape, place)} is unstable: it would fall away from there",
             "begin on the other side, or add what holds it: coordinates = {a = 0.1}",
         )
-    return Rest(place, mass, stiffness)
+    for what, key, size in (("kinetic", "masses", mass), ("potential", "stiffnesses", stiffness)):
+        largest, least = float(np.abs(size).max()), float(np.abs(np.diag(size)).min())
+        if largest > _LARGEST or (what == "kinetic" and least < 1.0 / _LARGEST):
+            raise _refusal(name, f"{what} makes {key} of {largest:.3g} to {least:.3g}", "look for a slip of the unit")
+    # What is so soft that it would take years to swing once is not held at all.
+    soft = np.abs(stiffness) < _NOTHING * np.sqrt(np.outer(np.diag(mass), np.diag(mass)))
+    return Rest(place, mass, np.where(soft, 0.0, stiffness))
 
 
 def _told(shape: FormulaShape, place: Array) -> str:

@@ -102,6 +102,12 @@ def _places(value: object) -> object:
     return tuple(value)
 
 
+def _mesh(value: object) -> object:
+    if not isinstance(value, dict | Part):
+        raise RefusedError(f"{shown(value)} is no mesh", "give a table, as in {points = [[0, 0, 0]], width = 0.01}")
+    return value
+
+
 class MeshSpec(Part):
     """``{points, edges, faces, width}``: what is seen, struck and heard of a formula.
 
@@ -142,7 +148,7 @@ class FormulaShape(Part):
     position: Annotated[tuple[str, str, str], BeforeValidator(_texts)]
     kinetic: Annotated[str, BeforeValidator(_text)]
     potential: Annotated[str, BeforeValidator(_text)]
-    mesh: MeshSpec
+    mesh: Annotated[MeshSpec, BeforeValidator(_mesh)]
 
     @model_validator(mode="after")
     def _readable(self) -> FormulaShape:

@@ -28,7 +28,7 @@ class LumpSpec(Part):
     """``{name, mass, place}``: a point mass; numbered from 1 unless it is named."""
 
     name: Name
-    mass_kg: Annotated[float, BeforeValidator(number("mass", above=0.0))] = Field(validation_alias="mass")
+    mass_kg: Annotated[float, BeforeValidator(number("mass", least=1e-12, most=1e9))] = Field(validation_alias="mass")
     place_m: Place = Field(validation_alias="place")
 
 
@@ -50,10 +50,10 @@ class LinkSpec(Part):
     """
 
     between: Annotated[tuple[str, str], BeforeValidator(_pair)]
-    stiffness_n_m: Annotated[float, BeforeValidator(number("stiffness", above=0.0))] = Field(
+    stiffness_n_m: Annotated[float, BeforeValidator(number("stiffness", above=0.0, most=1e15))] = Field(
         validation_alias="stiffness"
     )
-    damping_ns_m: Annotated[float, BeforeValidator(number("damping", least=0.0))] = Field(
+    damping_ns_m: Annotated[float, BeforeValidator(number("damping", least=0.0, most=1e12))] = Field(
         validation_alias="damper", default=0.0
     )
     rest_m: Annotated[float, BeforeValidator(number("length", least=0.0))] | None = Field(

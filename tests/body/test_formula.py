@@ -226,6 +226,7 @@ def test_scenes_that_make_no_sense_are_refused(old, new, what):
         ("{q = 0}", "-q'^2", "q^2", "no kinetic energy"),
         ("{q = 0, p = 0}", "q'^2", "q^2 + p^2", "no kinetic energy"),
         ("{q = 0}", "q'^2/q", "q^2", "not a number"),
+        ("{q = 0}", "1e200*q'^2", "q^2", "slip of the unit"),
     ],
 )
 def test_energies_that_make_no_body_are_refused(coordinates, kinetic, potential, what):
