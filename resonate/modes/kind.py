@@ -23,7 +23,7 @@ def motions(body: Body, modes: ModeSet) -> tuple[str, ...]:
     """Name the motion that holds most of the kinetic energy of each mode (m,).
 
     Lines move ``up`` (along the body's y), ``across`` (z), ``along`` (x) or ``twist``; plates by ``bending`` or
-    ``in-plane``; skins along their ``normal``; points ``up``, ``across`` or ``along``.
+    ``in-plane``; skins along their ``normal``; solids and points ``up``, ``across`` or ``along``.
 
     Parameters
     ----------
@@ -32,7 +32,7 @@ def motions(body: Body, modes: ModeSet) -> tuple[str, ...]:
     modes : ModeSet
         Its modes, solved or from the store.
     """
-    if body.family == "lump":
+    if body.family not in _MOTIONS:
         return _moved(body, modes)
     kinds = _MOTIONS[body.family]
     fields = sum(len(places) for places in kinds.values())
