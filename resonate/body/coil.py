@@ -18,6 +18,7 @@ from scipy.sparse import bsr_array, coo_matrix, csr_matrix
 from resonate.body.body import Forms, HeatForm, Inertia, Radiator, Surface, SurfaceSpot
 from resonate.body.coil_layout import skin, slices
 from resonate.body.coil_spot import coil_spot
+from resonate.body.described import Described
 from resonate.body.energy import Strain, assemble, sample
 from resonate.body.heat import Heat
 from resonate.body.reduce import reduced
@@ -31,7 +32,7 @@ if TYPE_CHECKING:
 
     from resonate.body.coil_layout import CoilLayout
     from resonate.body.spectral import Quadrature
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -62,7 +63,7 @@ def _crossing(vector: Array) -> Array:
 
 
 @dataclass(frozen=True)
-class CoilBody:
+class CoilBody(Described):
     """A coil; satisfies ``Body``.
 
     Parameters
@@ -86,11 +87,6 @@ class CoilBody:
     family: Literal["line", "skin", "wall"] = "line"
 
     @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
-
-    @property
     def grid(self) -> Grid:
         """Elements along the arc."""
         return self.layout.grid
@@ -99,31 +95,6 @@ class CoilBody:
     def freedoms(self) -> int:
         """Six for each node."""
         return len(self.grid.nodes_m) * FIELDS
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Material loss factor."""
-        return self.spec.material.loss
-
-    @property
-    def warnings(self) -> tuple[str, ...]:
-        """What a person should know."""
-        return self.layout.warnings + self.supports.warnings
 
     @property
     def thickness_m(self) -> float:

@@ -15,6 +15,7 @@ from scipy.sparse import csr_matrix, eye_array
 
 from resonate.body.balls import Balls
 from resonate.body.body import Forms, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.display import join
 from resonate.body.formula_rest import Rest, find_rest, glides_at
 from resonate.body.tape import evaluate
@@ -24,7 +25,7 @@ from resonate.scene.model import FormulaShape
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from resonate.scene.model import BandSpec, BodySpec, SpotSpec
+    from resonate.scene.model import BodySpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -46,7 +47,7 @@ class _Carried:
 
 
 @dataclass(frozen=True)
-class FormulaBody:
+class FormulaBody(Described):
     """A body given by T and V; satisfies ``Body``.
 
     Parameters
@@ -65,11 +66,6 @@ class FormulaBody:
     held: bool = False
 
     @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
-
-    @property
     def shape(self) -> FormulaShape:
         """Coordinates, energies and mesh."""
         assert isinstance(self.spec.shape, FormulaShape)  # noqa: S101 (the caller sorts the kinds)
@@ -79,16 +75,6 @@ class FormulaBody:
     def freedoms(self) -> int:
         """Number of coordinates."""
         return len(self.shape.coordinates)
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Loss factor of the material, which the whole potential shares."""
-        return self.spec.material.loss
 
     @property
     def warnings(self) -> tuple[str, ...]:

@@ -16,6 +16,7 @@ from scipy.sparse import csr_matrix, diags
 
 from resonate.body.balls import Balls
 from resonate.body.body import Forms, Inertia, Radiator, Surface, SurfaceSpot
+from resonate.body.described import Described
 from resonate.body.display import join
 from resonate.body.reduce import reduced
 from resonate.body.support import Held, Supports, supports
@@ -25,7 +26,7 @@ from resonate.scene.model import BoxPlace, LumpsShape, NamedPlace
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from resonate.scene.model import BandSpec, BodySpec, HoldSpec, SpotSpec
+    from resonate.scene.model import BodySpec, HoldSpec, SpotSpec
 
     Array = NDArray[np.float64]
 
@@ -117,7 +118,7 @@ class Springs:
 
 
 @dataclass(frozen=True)
-class LumpsBody:
+class LumpsBody(Described):
     """Point masses and springs; satisfies ``Body``.
 
     Parameters
@@ -139,11 +140,6 @@ class LumpsBody:
     family: Literal["lump"] = "lump"
 
     @property
-    def name(self) -> str:
-        """The name given in the scene."""
-        return self.spec.name
-
-    @property
     def shape(self) -> LumpsShape:
         """Points and springs."""
         assert isinstance(self.spec.shape, LumpsShape)  # noqa: S101 (the caller sorts the kinds)
@@ -163,26 +159,6 @@ class LumpsBody:
     def freedoms(self) -> int:
         """Three for each point."""
         return 3 * len(self.mass_kg)
-
-    @property
-    def free(self) -> bool:
-        """True when nothing supports it."""
-        return not self.spec.support and not self.spec.held
-
-    @property
-    def held(self) -> bool:
-        """True when it must not move as a whole."""
-        return self.spec.held
-
-    @property
-    def bands(self) -> BandSpec:
-        """The bands asked for."""
-        return self.spec.modes
-
-    @property
-    def loss(self) -> tuple[tuple[float, float], ...]:
-        """Loss factor of the material, which the springs share."""
-        return self.spec.material.loss
 
     @property
     def warnings(self) -> tuple[str, ...]:

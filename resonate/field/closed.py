@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.field.samples import frozen, phasor
+from resonate.field.samples import frozen, simple_sources
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -89,10 +89,4 @@ class ClosedSurface:
         rays = samples.rays(place_m)
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
         spread = self.gain * samples.air.density_kg_m3 / (4.0 * np.pi) * self.area_m2 / distance
-        heard = np.empty(samples.count, dtype=np.complex128)
-        for part in samples.chunks():
-            turned = phasor(samples.wavenumber_1_m[part, None] * (reference_m - distance))
-            motion = self.motion[part]
-            heard[part].real = (motion * turned.cosine) @ spread
-            heard[part].imag = (motion * turned.sine) @ spread
-        return samples.padded(heard)
+        return simple_sources(samples, self.motion, spread, distance_m=distance, reference_m=reference_m)

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from resonate.field.samples import frozen, phasor
+from resonate.field.samples import frozen, simple_sources
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
@@ -84,10 +84,4 @@ class BaffledFace:
         distance = np.sqrt(np.einsum("ni,ni->n", rays, rays))
         side = 1.0 if float(self.area_m2 @ np.einsum("ni,ni->n", rays, self.normals)) >= 0.0 else -1.0
         spread = side * samples.air.density_kg_m3 / (2.0 * np.pi) * self.area_m2 / distance
-        heard = np.empty(samples.count, dtype=np.complex128)
-        for part in samples.chunks():
-            turned = phasor(samples.wavenumber_1_m[part, None] * (reference_m - distance))
-            motion = self.motion[part]
-            heard[part].real = (motion * turned.cosine) @ spread
-            heard[part].imag = (motion * turned.sine) @ spread
-        return samples.padded(heard)
+        return simple_sources(samples, self.motion, spread, distance_m=distance, reference_m=reference_m)

@@ -172,3 +172,27 @@ def near_m(body: Body) -> float:
         part = surface[begin : begin + 4096, None, :] - radiator.points_m
         reach = max(reach, float(np.sqrt(np.einsum("sni,sni->sn", part, part).min(axis=1).max())))
     return max(spacing, reach)
+
+
+def simple_sources(
+    samples: Samples, motion: Array, spread: Array, *, distance_m: Array, reference_m: float
+) -> NDArray[np.complex128]:
+    """Sum simple sources: (m,) of all modes, silent ones zero.
+
+    Parameters
+    ----------
+    samples : Samples
+        Samples of the surface.
+    motion : Array
+        (h, n) displacement along the outward normal in each sounding mode, kg**-0.5.
+    spread : Array
+        (n,) pressure times distance over acceleration, over the distance, of each sample.
+    distance_m, reference_m : Array, float
+        (n,) distance of each sample, and the one whose delay is left out of the phases.
+    """
+    heard = np.empty(samples.count, dtype=np.complex128)
+    for part in samples.chunks():
+        turned = phasor(samples.wavenumber_1_m[part, None] * (reference_m - distance_m))
+        heard[part].real = (motion[part] * turned.cosine) @ spread
+        heard[part].imag = (motion[part] * turned.sine) @ spread
+    return samples.padded(heard)

@@ -192,7 +192,7 @@ def _read_outline(value: object, path: Path, faults: Faults) -> Part | None:
         return None
     if "kind" in table:
         kind = table["kind"]
-        if kind not in OUTLINES:
+        if not isinstance(kind, str) or kind not in OUTLINES:
             faults.add(
                 (*path, "kind"), what=f"{shown(kind)} is not an outline", fix=choose(str(kind), OUTLINES)
             )

@@ -362,3 +362,13 @@ def test_whatever_stands_in_a_line_is_read_or_refused_in_full(line, key, value):
             assert fault.what
             assert fault.fix
             assert "cannot be used here" not in fault.what  # a reason of our own, not the validator's
+
+
+@pytest.mark.parametrize("kind", ["[]", "{}", "3", "[[1]]", "true"])
+@pytest.mark.parametrize("key", ["shape", "outline"])
+def test_a_kind_that_is_no_word_is_refused(key, kind):
+    rest = {"shape": "", "outline": 'shape = "plate"\nthickness = 0.002\n'}[key]
+    text = f'[take]\nlength = 1\n[[body]]\nname = "lid"\nmaterial = "brass"\n{rest}{key} = {{kind = {kind}}}\n'
+    with pytest.raises(SceneError) as caught:
+        parse_scene(text, where="galley.toml")
+    assert all(fault.what and fault.fix for fault in caught.value.faults)
