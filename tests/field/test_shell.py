@@ -7,7 +7,6 @@ import pytest
 from scipy.special import spherical_jn, spherical_yn
 
 from resonate.body.body import Radiator
-from resonate.field.closed import OVAL
 from resonate.field.doubts import told
 
 
@@ -39,6 +38,10 @@ def exact(air_model, radius, degree, wavenumber, distance):
     speed = 1.0 / (wavenumber * air.speed_m_s)
     ratio = hankel(wavenumber * distance) / hankel(wavenumber * radius, slope=True)
     return air.density_kg_m3 * air.speed_m_s * speed * abs(ratio)
+
+
+# A vessel rings in its oval mode first: that one must come out as loud as the exact sphere.
+OVAL = 5.0 / 3.0
 
 
 # Of degree l small spheres are (2 l + 1)/(l + 1) as loud as their simple sources (leading terms of j_l and h_l').
